@@ -1,0 +1,121 @@
+"""Force constants of the pair model: at any wave vector directly, and folded into a supercell."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from thermex.potential import ewald
+from thermex.potential.lattice_sums import RadialBonds, _pair_matrices, radial_bonds
+from thermex.potential.model import PairModel, Particles
+
+Array = NDArray[np.float64]
+Complex = NDArray[np.complex128]
+
+
+def force_constants_at(model: PairModel, particles: Particles, q: Array) -> Complex:
+    """Return Φ_ij(q) = Σ_R Φ_ij(0, R) e^{iq·(R + r_j − r_i)} by direct and Ewald sums.
+
+    Parameters
+    ----------
+    q
+        Shape (nq, 3), in units of the primitive reciprocal vectors.
+
+    Returns
+    -------
+    Shape (nq, 3m, 3m), eV/Å², not divided by masses. At q = 0 the macroscopic field is left out
+    (transverse limit).
+    """
+    radial = radial_bonds(model, particles)
+    wave = 2.0 * np.pi * np.atleast_2d(q) @ np.linalg.inv(particles.lattice).T
+    out = _direct(radial, particles.size, wave)
+    eta = ewald.split_parameter(particles.volume, particles.size)
+    for n, coupling in model.powers().items():
+        c = coupling[np.ix_(particles.kind, particles.kind)]
+        own = _reciprocal(n, c, eta, particles, np.zeros(3))
+        for index, k in enumerate(wave):
+            out[index] += _reciprocal(n, c, eta, particles, k)
+        m = particles.size
+        row = own.reshape(m, 3, m, 3).sum(axis=2).real
+        for i in range(m):
+            out[:, 3 * i : 3 * i + 3, 3 * i : 3 * i + 3] -= row[i]
+    return out
+
+
+def _direct(radial: RadialBonds, m: int, wave: Array) -> Complex:
+    """Sum −Φ_b e^{iq·x} over the bonds i→j, and the self term by the acoustic sum rule."""
+    matrices = _pair_matrices(radial).reshape(-1, 9)
+    flat = radial.bonds.first * m + radial.bonds.second
+    order = np.argsort(flat, kind="stable")
+    edges = np.searchsorted(flat[order], np.arange(m * m + 1))
+    phases = np.exp(1j * (wave @ radial.bonds.vector[order].T))
+    sorted_matrices = matrices[order]
+    out = np.zeros((len(wave), m * m, 9), dtype=complex)
+    rest = np.zeros((m, 9))
+    for pair in range(m * m):
+        part = slice(edges[pair], edges[pair + 1])
+        if part.stop > part.start:
+            out[:, pair] = -phases[:, part] @ sorted_matrices[part]
+            rest[pair // m] += sorted_matrices[part].sum(axis=0)
+    for i in range(m):
+        out[:, i * m + i] += rest[i]
+    blocks = out.reshape(-1, m, m, 3, 3).transpose(0, 1, 3, 2, 4)
+    return np.ascontiguousarray(blocks).reshape(-1, 3 * m, 3 * m)
+
+
+def _reciprocal(n: float, c: Array, eta: float, particles: Particles, wave: Array) -> Complex:
+    """Reciprocal part of one power at one q without its self term, shape (3m, 3m)."""
+    k = ewald.reciprocal_vectors(particles.lattice, eta, wave)
+    squared = np.einsum("ga,ga->g", k, k)
+    keep = squared > 1e-24
+    k, squared = k[keep], squared[keep]
+    g = ewald.kernel_value(n, eta, squared) / particles.volume
+    m = particles.size
+    # the sum over R of e^{iq·(R + r_j − r_i)} leaves k = q + G with the phase e^{iG·(r_i − r_j)}
+    phases = np.exp(-1j * (k - wave) @ particles.positions.T)
+    waves = (phases[:, :, None] * k[:, None, :]).reshape(len(k), 3 * m)
+    outer = (waves.conj() * g[:, None]).T @ waves
+    return np.asarray((outer.reshape(m, 3, m, 3) * c[:, None, :, None]).reshape(3 * m, 3 * m))
+
+
+def commensurate_points(repeat: tuple[int, int, int]) -> Array:
+    """Return the wave vectors that a supercell of ``repeat`` primitive cells holds, shape (N, 3)."""
+    axes = [np.arange(n) / n for n in repeat]
+    return np.stack(np.meshgrid(*axes, indexing="ij"), axis=-1).reshape(-1, 3)
+
+
+def supercell_force_constants(model: PairModel, particles: Particles, repeat: tuple[int, int, int]) -> Array:
+    """Return the force constants of a periodic supercell, all lattice sums complete.
+
+    Found from Φ(q) at the commensurate wave vectors by a Fourier transform, which is exact.
+
+    Returns
+    -------
+    Shape (m, m, n1, n2, n3, 3, 3), eV/Å²: particle i of the home cell with particle j of cell
+    (l1, l2, l3).
+    """
+    q = commensurate_points(repeat)
+    m = particles.size
+    half, mirror = _half(repeat)
+    values = np.empty((len(q), 3 * m, 3 * m), dtype=complex)
+    values[half] = force_constants_at(model, particles, q[half])
+    rest = mirror >= 0
+    values[rest] = values[mirror[rest]].conj()
+    # take the phases of the positions off: Φ(q) e^{−iq·(r_j − r_i)} is periodic
+    fractional = particles.positions @ np.linalg.inv(particles.lattice)
+    phase = np.exp(2j * np.pi * q @ fractional.T)
+    blocks = values.reshape(-1, m, 3, m, 3).transpose(0, 1, 3, 2, 4)
+    blocks = blocks * (phase[:, :, None] * phase.conj()[:, None, :])[..., None, None]
+    grid = blocks.reshape(*repeat, m, m, 3, 3)
+    folded = np.fft.fftn(grid, axes=(0, 1, 2)).real / len(q)
+    return np.ascontiguousarray(folded.transpose(3, 4, 0, 1, 2, 5, 6))
+
+
+def _half(repeat: tuple[int, int, int]) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+    """Return the indices computed and, for the others, the index of −q (else −1)."""
+    shape = np.array(repeat)
+    index = np.stack(np.meshgrid(*[np.arange(n) for n in repeat], indexing="ij"), axis=-1).reshape(-1, 3)
+    opposite = np.ravel_multi_index(tuple(((-index) % shape).T), repeat)
+    own = np.arange(len(index))
+    mirror = np.where(opposite < own, opposite, -1)
+    return own[mirror < 0], mirror
