@@ -1,0 +1,1 @@
+"""One module a command; each has ``add_parser(subparsers, common)`` and ``run(arguments) -> int``."""

@@ -1,0 +1,277 @@
+"""The table on the terminal: text out of a prediction and what was measured, nothing else."""
+
+from __future__ import annotations
+
+import textwrap
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from thermex.prediction import Prediction
+from thermex.report.beside import Beside, Column
+from thermex.report.caution import CAUTION
+from thermex.report.numbers import ABSENT, error_percent, fixed, micro, percent, significant, temperature
+from thermex.report.words import heading, limits
+
+Array = NDArray[np.float64]
+GAPS = ("  ", " ")
+
+
+@dataclass(frozen=True, slots=True)
+class Field:
+    """One column of the table: two lines of heading, the texts, and how readily it is given up."""
+
+    head: str
+    unit: str
+    cells: tuple[str, ...]
+    rank: int = 0
+    """0 is always shown; of the others the highest goes first when the line is too long."""
+
+    @property
+    def width(self) -> int:
+        """Characters that the column needs."""
+        return max(len(self.head), len(self.unit), *(len(cell) for cell in self.cells), 1)
+
+
+def prediction_text(prediction: Prediction, beside: Beside, *, width: int = 100, rows: int = 16) -> str:
+    """Return the whole text for the terminal.
+
+    Parameters
+    ----------
+    prediction
+        The result.
+    beside
+        Measured values at its temperatures.
+    width
+        Longest line in characters.
+    rows
+        Most temperatures shown; the files hold all of them.
+    """
+    chosen = chosen_rows(prediction, beside, rows)
+    shown, left_out, gap = fitted(fields(prediction, beside, chosen), width)
+    parts = [
+        *wrapped(heading(prediction), width),
+        "",
+        *lines_of(shown, gap),
+        *_left_out(prediction, left_out, len(chosen), width),
+        "",
+        *wrapped(legend(prediction, shown), width),
+        *wrapped(conventions(prediction), width),
+        *_sources(beside, shown, width),
+        "",
+        *wrapped(limits(prediction), width),
+        "",
+        *wrapped([CAUTION], width),
+    ]
+    return "\n".join(parts) + "\n"
+
+
+def chosen_rows(prediction: Prediction, beside: Beside, most: int) -> list[int]:
+    """Return the indices of the temperatures to show, at most ``most`` of them, ends included.
+
+    Among close temperatures one with a measured α is preferred.
+    """
+    size = len(prediction.temperature_K)
+    if size <= most:
+        return list(range(size))
+    spread = np.linspace(0, size - 1, most)
+    measured = np.isfinite(beside.column("alpha_linear_per_K", size).value)
+    reach = (size - 1) / (most - 1) / 2.0
+    picked = [0]
+    for middle in spread[1:-1]:
+        near = [k for k in range(size) if abs(k - middle) < reach and picked[-1] < k < size - 1]
+        better = [k for k in near if measured[k]] or near
+        if better:
+            picked.append(min(better, key=lambda k: abs(k - middle)))
+    return [*picked, size - 1]
+
+
+def fields(prediction: Prediction, beside: Beside, rows: Sequence[int]) -> list[Field]:
+    """Return every column that this prediction has, cells for the chosen rows."""
+    size = len(prediction.temperature_K)
+    alpha = beside.column("alpha_linear_per_K", size)
+    gamma = beside.column("gruneisen", size)
+    columns = [
+        Field("T", "K", _each(rows, prediction.temperature_K, temperature)),
+        *_lattice_fields(prediction, rows),
+        *_alpha_fields(prediction, rows),
+    ]
+    if np.isfinite(alpha.value).any():
+        columns += [
+            Field("α meas.", "10⁻⁶/K", _with_source(rows, alpha, micro)),
+            Field("diff.", "%", _each(rows, best_alpha(prediction) / alpha.value - 1.0, percent)),
+        ]
+    columns.append(Field("γ", "", _each(rows, prediction.gruneisen, lambda v: fixed(v, 3))))
+    if np.isfinite(gamma.value).any():
+        columns.append(Field("γ meas.", "", _with_source(rows, gamma, lambda v: fixed(v, 2)), rank=1))
+    columns += [
+        Field("B_T", "GPa", _each(rows, prediction.bulk_modulus_T_GPa, lambda v: significant(v, 4)), rank=2),
+        Field("C_P", "J/mol K", _each(rows, prediction.heat_capacity_P_J_per_mol_K, _heat), rank=3),
+    ]
+    return columns
+
+
+def _heat(value: float) -> str:
+    return fixed(value, 2 if abs(value) < 1000.0 else 1)
+
+
+def _each(rows: Sequence[int], values: Array, form: object) -> tuple[str, ...]:
+    assert callable(form)
+    return tuple(str(form(float(values[k]))) for k in rows)
+
+
+def _with_source(rows: Sequence[int], column: Column, form: object) -> tuple[str, ...]:
+    texts = _each(rows, column.value, form)
+    numbers = [f" [{column.source[k]}]" if column.source[k] else "" for k in rows]
+    room = max((len(number) for number in numbers), default=0)
+    return tuple(text + number.ljust(room) for text, number in zip(texts, numbers, strict=True))
+
+
+def _lattice_fields(prediction: Prediction, rows: Sequence[int]) -> list[Field]:
+    return [
+        Field(axis, "Å", _each(rows, values, lambda v: fixed(v, 4)), rank=0 if axis == "a" else 5)
+        for axis, values in prediction.lattice_A.items()
+    ]
+
+
+def _alpha_fields(prediction: Prediction, rows: Sequence[int]) -> list[Field]:
+    found = [Field("α", "10⁻⁶/K", _each(rows, prediction.alpha_linear_per_K, micro))]
+    if len(prediction.alpha_axis_per_K) > 1:
+        found = [
+            Field(f"α_{axis}", "10⁻⁶/K", _each(rows, values, micro))
+            for axis, values in prediction.alpha_axis_per_K.items()
+        ] + [Field("α avg.", "10⁻⁶/K", found[0].cells)]
+    found.append(Field("±", "%", _each(rows, prediction.alpha_relative_error, error_percent)))
+    if prediction.rule is not None:
+        found.append(
+            Field("rule", "%", _each(rows, prediction.rule.overestimate, lambda v: percent(v, 0)), rank=4)
+        )
+    if prediction.anharmonic is not None:
+        corrected = prediction.anharmonic.alpha_linear_per_K
+        found.append(Field("α corr.", "10⁻⁶/K", _corrected_cells(prediction, corrected, rows)))
+    return found
+
+
+def _corrected_cells(prediction: Prediction, corrected: Array, rows: Sequence[int]) -> tuple[str, ...]:
+    """Corrected α, an asterisk where it is extrapolated."""
+    assert prediction.anharmonic is not None
+    start = prediction.anharmonic.extrapolated_from_K
+    texts = _each(rows, corrected, micro)
+    marks = [
+        "*" if text != ABSENT and prediction.temperature_K[k] > start else " "
+        for text, k in zip(texts, rows, strict=True)
+    ]
+    return tuple(text + mark for text, mark in zip(texts, marks, strict=True))
+
+
+def best_alpha(prediction: Prediction) -> Array:
+    """Return the corrected α where there is one, else the quasi-harmonic one; shape (nT,), 1/K."""
+    plain = prediction.alpha_linear_per_K
+    if prediction.anharmonic is None:
+        return plain
+    corrected = prediction.anharmonic.alpha_linear_per_K
+    best: Array = np.where(np.isfinite(corrected), corrected, plain)
+    return best
+
+
+def fitted(columns: Sequence[Field], width: int) -> tuple[list[Field], list[Field], str]:
+    """Return the columns that fit on a line, those given up for it, and the gap between columns."""
+    shown = list(columns)
+    gone: list[Field] = []
+    while _length(shown, GAPS[-1]) > width and any(column.rank for column in shown):
+        worst = max(shown, key=lambda column: column.rank)
+        shown.remove(worst)
+        gone.append(worst)
+    gap = next((gap for gap in GAPS if _length(shown, gap) <= width), GAPS[-1])
+    return shown, gone, gap
+
+
+def _length(columns: Sequence[Field], gap: str) -> int:
+    return sum(column.width for column in columns) + len(gap) * (len(columns) - 1)
+
+
+def lines_of(columns: Sequence[Field], gap: str = GAPS[0]) -> list[str]:
+    """Return the lines of the table: heads, units, a rule, one line a row; all right-aligned."""
+    heads = gap.join(column.head.rjust(column.width) for column in columns)
+    units = gap.join(column.unit.rjust(column.width) for column in columns)
+    body = [
+        gap.join(cell.rjust(column.width) for cell, column in zip(row, columns, strict=True))
+        for row in zip(*(column.cells for column in columns), strict=True)
+    ]
+    return [heads.rstrip(), units.rstrip(), "─" * _length(columns, gap), *(line.rstrip() for line in body)]
+
+
+def _left_out(prediction: Prediction, gone: Sequence[Field], rows: int, width: int) -> list[str]:
+    size = len(prediction.temperature_K)
+    said = []
+    if rows < size:
+        said.append(f"{rows} of {size} temperatures")
+    if gone:
+        said.append("without " + ", ".join(column.head for column in gone))
+    return wrapped([f"Shown: {'; '.join(said)}. The files of --out hold all."], width) if said else []
+
+
+def legend(prediction: Prediction, shown: Sequence[Field]) -> list[str]:
+    """Return one sentence for each heading that does not explain itself."""
+    heads = {column.head for column in shown}
+    said = ["α: instantaneous linear coefficient (1/L)(dL/dT); ±: its numerical error alone, relative."]
+    if "α avg." in heads:
+        said.append("α avg.: polycrystal average, a third of the volume coefficient.")
+    if "rule" in heads and prediction.rule is not None:
+        said.append(
+            "rule: how much the quasi-harmonic α is expected to be too high. " + prediction.rule.words.strip()
+        )
+    if "α corr." in heads and prediction.anharmonic is not None:
+        said.append(_correction_words(prediction))
+    if "diff." in heads:
+        which = "α corr. where printed, else α," if "α corr." in heads else "α"
+        said.append(f"diff.: {which} over α meas., minus one. [n]: number of the source below.")
+    said.append("C_P per mole of formula units.")
+    return said
+
+
+def _correction_words(prediction: Prediction) -> str:
+    assert prediction.anharmonic is not None
+    kind, start = prediction.anharmonic.kind, prediction.anharmonic.starts_K
+    words = f"α corr.: with the anharmonic correction ({kind}), from {temperature(start)} K on"
+    end = prediction.anharmonic.extrapolated_from_K
+    if np.isfinite(end) and end < prediction.temperature_K[-1]:
+        words += f"; *: extrapolated (above {temperature(end)} K)"
+    return words + "."
+
+
+def conventions(prediction: Prediction) -> list[str]:
+    """Return the other two conventions at a few temperatures, one line each."""
+    kelvin = prediction.temperature_K
+    good = [k for k in range(len(kelvin)) if np.isfinite(prediction.elongation[k])]
+    if len(good) < 2:
+        return []
+    picked = sorted({good[round(step)] for step in np.linspace(0, len(good) - 1, 5)})
+    start = temperature(prediction.reference_temperature_K)
+    length = ", ".join(
+        f"{fixed(100 * prediction.elongation[k], 3)} ({temperature(kelvin[k])} K)" for k in picked
+    )
+    mean = ", ".join(f"{micro(prediction.alpha_mean_per_K[k])} ({temperature(kelvin[k])} K)" for k in picked)
+    return [
+        f"ΔL/L₀ from {start} K, %: {length}.",
+        f"Mean coefficient between {start} K and T, 10⁻⁶/K: {mean}.",
+    ]
+
+
+def _sources(beside: Beside, shown: Sequence[Field], width: int) -> list[str]:
+    """Number the sources whose values are in the table."""
+    text = " ".join(cell for column in shown for cell in column.cells)
+    used = [n for n in range(1, len(beside.sources) + 1) if f"[{n}]" in text]
+    if not used:
+        return ["", "Measured: nothing to compare with at these temperatures."]
+    return ["", "Measured:", *wrapped([f"[{n}] {beside.sources[n - 1]}" for n in used], width)]
+
+
+def wrapped(sentences: Sequence[str], width: int) -> list[str]:
+    """Break each sentence into lines of at most ``width`` characters, continuation indented."""
+    lines: list[str] = []
+    for sentence in sentences:
+        lines += textwrap.wrap(sentence, width, subsequent_indent="  ", break_long_words=True) or [""]
+    return lines
