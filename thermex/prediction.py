@@ -4,12 +4,15 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
 
-from thermex.case.case import Case
 from thermex.crystal.crystal import Crystal
+
+if TYPE_CHECKING:
+    from thermex.case.case import Case
 
 Array = NDArray[np.float64]
 

@@ -6,7 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from thermex.potential import ewald
-from thermex.potential.lattice_sums import RadialBonds, _pair_matrices, radial_bonds
+from thermex.potential.lattice_sums import RadialBonds, pair_matrices, radial_bonds
 from thermex.potential.model import PairModel, Particles
 
 Array = NDArray[np.float64]
@@ -44,7 +44,7 @@ def force_constants_at(model: PairModel, particles: Particles, q: Array) -> Comp
 
 def _direct(radial: RadialBonds, m: int, wave: Array) -> Complex:
     """Sum −Φ_b e^{iq·x} over the bonds i→j, and the self term by the acoustic sum rule."""
-    matrices = _pair_matrices(radial).reshape(-1, 9)
+    matrices = pair_matrices(radial).reshape(-1, 9)
     flat = radial.bonds.first * m + radial.bonds.second
     order = np.argsort(flat, kind="stable")
     edges = np.searchsorted(flat[order], np.arange(m * m + 1))
@@ -78,6 +78,31 @@ def _reciprocal(n: float, c: Array, eta: float, particles: Particles, wave: Arra
     return np.asarray((outer.reshape(m, 3, m, 3) * c[:, None, :, None]).reshape(3 * m, 3 * m))
 
 
+def direct_force_constants(radial: RadialBonds, size: int, wave: Array) -> Complex:
+    """Return Φ(q) of bonds alone, shape (nq, 3m, 3m); ``wave`` (nq, 3) in 1/Å."""
+    return _direct(radial, size, wave)
+
+
+def folded_bonds(radial: RadialBonds, size: int, repeat: tuple[int, int, int]) -> Array:
+    """Fold the force constants of bonds into a supercell: exact for terms that end inside it.
+
+    Returns
+    -------
+    Shape (m, m, n1, n2, n3, 3, 3), like :func:`supercell_force_constants`.
+    """
+    matrices = pair_matrices(radial).reshape(-1, 9)
+    cell = radial.bonds.cell % np.array(repeat)
+    shape = (size, size, *repeat)
+    flat = np.ravel_multi_index((radial.bonds.first, radial.bonds.second, *cell.T), shape)
+    total = int(np.prod(shape))
+    out = np.stack([np.bincount(flat, -matrices[:, k], minlength=total) for k in range(9)], axis=-1)
+    out = out.reshape(*shape, 9)
+    own = np.stack([np.bincount(radial.bonds.first, matrices[:, k], minlength=size) for k in range(9)], axis=-1)
+    for i in range(size):
+        out[i, i, 0, 0, 0] += own[i]
+    return np.ascontiguousarray(out.reshape(*shape, 3, 3))
+
+
 def commensurate_points(repeat: tuple[int, int, int]) -> Array:
     """Return the wave vectors that a supercell of ``repeat`` primitive cells holds, shape (N, 3)."""
     axes = [np.arange(n) / n for n in repeat]
@@ -97,16 +122,16 @@ def supercell_force_constants(model: PairModel, particles: Particles, repeat: tu
     q = commensurate_points(repeat)
     m = particles.size
     half, mirror = _half(repeat)
-    values = np.empty((len(q), 3 * m, 3 * m), dtype=complex)
-    values[half] = force_constants_at(model, particles, q[half])
-    rest = mirror >= 0
-    values[rest] = values[mirror[rest]].conj()
-    # take the phases of the positions off: Φ(q) e^{−iq·(r_j − r_i)} is periodic
+    values = force_constants_at(model, particles, q[half])
+    # take the phases of the positions off: Φ(q) e^{−iq·(r_j − r_i)} is periodic in q
     fractional = particles.positions @ np.linalg.inv(particles.lattice)
-    phase = np.exp(2j * np.pi * q @ fractional.T)
+    phase = np.exp(2j * np.pi * q[half] @ fractional.T)
     blocks = values.reshape(-1, m, 3, m, 3).transpose(0, 1, 3, 2, 4)
-    blocks = blocks * (phase[:, :, None] * phase.conj()[:, None, :])[..., None, None]
-    grid = blocks.reshape(*repeat, m, m, 3, 3)
+    periodic = np.empty((len(q), m, m, 3, 3), dtype=complex)
+    periodic[half] = blocks * (phase[:, :, None] * phase.conj()[:, None, :])[..., None, None]
+    rest = mirror >= 0
+    periodic[rest] = periodic[mirror[rest]].conj()
+    grid = periodic.reshape(*repeat, m, m, 3, 3)
     folded = np.fft.fftn(grid, axes=(0, 1, 2)).real / len(q)
     return np.ascontiguousarray(folded.transpose(3, 4, 0, 1, 2, 5, 6))
 

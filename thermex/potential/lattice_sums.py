@@ -55,19 +55,44 @@ class RadialBonds:
     """Shape (nb,): (φ″ − φ′/r)/r², eV/Å⁴, so that Φ = curvature x xᵀ + tension I."""
 
 
-def radial_bonds(model: PairModel, particles: Particles) -> RadialBonds:
-    """Collect the directly summed pairs: short-ranged terms and the real parts of all powers."""
+@dataclass(frozen=True, slots=True)
+class BondTable:
+    """The directly summed pairs of a cell and the terms that act along them."""
+
+    bonds: Bonds
+    groups: tuple[tuple[NDArray[np.int64], tuple[Term, ...]], ...]
+    """(indices of bonds, terms)."""
+    own: RadialBonds
+    """Core–own shell pairs."""
+
+
+def bond_table(model: PairModel, particles: Particles) -> BondTable:
+    """List the directly summed pairs: short-ranged terms and the real parts of all powers."""
     eta = ewald.split_parameter(particles.volume, particles.size)
     cutoff = _cutoff(model, eta)
     bonds = find_bonds(particles.lattice, particles.positions, cutoff)
     bonds = _without(bonds, list(model.excluded_pairs(particles)))
+    groups = tuple(_groups(model, particles, bonds, bonds.length, eta))
+    return BondTable(bonds, groups, _own_shell_bonds(model, particles, eta))
+
+
+def radial_of(table: BondTable, scale: float = 1.0) -> RadialBonds:
+    """Evaluate the terms along the bonds of a table, all bonds stretched by ``scale``."""
+    bonds = table.bonds
+    if scale != 1.0:
+        bonds = Bonds(bonds.first, bonds.second, bonds.cell, bonds.vector * scale)
     length = bonds.length
     radial = np.zeros((3, len(length)))
-    for chosen, terms in _groups(model, particles, bonds, length, eta):
+    for chosen, terms in table.groups:
         radial[:, chosen] += sum_of(terms, length[chosen], 2)
     tension = radial[1] / length
     direct = RadialBonds(bonds, radial[0], tension, (radial[2] - tension) / length**2)
-    return _joined(direct, _own_shell_bonds(model, particles, eta))
+    return _joined(direct, table.own)
+
+
+def radial_bonds(model: PairModel, particles: Particles) -> RadialBonds:
+    """Collect the directly summed pairs with their radial derivatives."""
+    return radial_of(bond_table(model, particles))
 
 
 def _own_shell_bonds(model: PairModel, particles: Particles, eta: float) -> RadialBonds:
@@ -145,7 +170,7 @@ def _groups(
                 yield chosen[length[chosen] < limit], (link.term,)
 
 
-def _pair_matrices(radial: RadialBonds) -> Array:
+def pair_matrices(radial: RadialBonds) -> Array:
     """Return Φ of every bond, shape (nb, 3, 3): d²φ/dx dx."""
     x = radial.bonds.vector
     out: Array = radial.curvature[:, None, None] * x[:, :, None] * x[:, None, :]
@@ -170,7 +195,7 @@ def lattice_response(model: PairModel, particles: Particles) -> Response:
 def _direct_response(model: PairModel, particles: Particles, gradient: Array, hessian: Array) -> float:
     radial = radial_bonds(model, particles)
     bonds, x = radial.bonds, radial.bonds.vector
-    matrices = _pair_matrices(radial)
+    matrices = pair_matrices(radial)
     stretched = np.einsum("eab,nb->nea", STRAINS, x)
     along = np.einsum("nea,na->ne", stretched, x)
     gradient[:6] += 0.5 * radial.tension @ along
