@@ -24,6 +24,7 @@ from thermex.prediction import (
     StaticLattice,
     ZoneCentre,
 )
+from thermex.report.beside import Beside, Column, Curve
 
 Array = NDArray[np.float64]
 GAS = 8.314462618
@@ -273,4 +274,34 @@ def axial_prediction(title: str = "Invented axial crystal") -> Prediction:
         zero_point_lattice_A={"a": 4.2042, "c": 2.69},
         path_alpha_volume_per_K=2.97 * alpha,
         effort=replace(cubic.effort, strain_window=np.array([[-0.002, 0.03], [-0.003, 0.04]])),
+    )
+
+
+def measured_beside(prediction: Prediction) -> Beside:
+    """Return invented measured values beside a prediction: two sources, two columns, four curves."""
+    kelvin = prediction.temperature_K
+    points = {100.0: 2.1e-6, 300.0: 10.4e-6, 500.0: 12.8e-6, 1000.0: 14.9e-6}
+    alpha = np.array([points.get(float(t), np.nan) for t in kelvin])
+    gamma = np.where(kelvin == 300.0, 1.54, np.nan)
+    dense = np.linspace(20.0, 1500.0, 150)
+    room = np.array([300.0])
+    curves = (
+        _curve("alpha_linear_per_K", np.array([*points]), np.array([*points.values()]), 1),
+        _curve("alpha_linear_per_K", dense, 1.6e-5 * dense / (dense + 150.0), 2),
+        _curve("gruneisen", room, np.array([1.54]), 2),
+        _curve("bulk_modulus_S_GPa", room, np.array([163.0]), 1),
+    )
+    return Beside(
+        sources=("Invented series one, from memory", "Invented series <two>"),
+        columns={
+            "alpha_linear_per_K": Column(alpha, tuple(int(np.isfinite(v)) for v in alpha)),
+            "gruneisen": Column(gamma, tuple(2 * int(np.isfinite(v)) for v in gamma)),
+        },
+        curves=curves,
+    )
+
+
+def _curve(quantity: str, kelvin: Array, value: Array, source: int) -> Curve:
+    return Curve(
+        quantity, "", kelvin, value, 0.02 * value if source == 1 else np.full(len(value), np.nan), source
     )

@@ -9,9 +9,12 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
+from thermex.constants import GPA_PER_EV_A3
+from thermex.potential.build import pair_model
 from thermex.potential.model import PairModel
 from thermex.prediction import Prediction
-from thermex.report.style import BLACK, DASHES, GREY, LINES, VERMILION, dress, legend, new_axes
+from thermex.report.style import BLACK, BLUE, DASHES, GREY, LINES, VERMILION, dress, legend, new_axes
+from thermex.static import scaled_energy
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -49,7 +52,7 @@ def plot_pair_curves(prediction: Prediction, *, ax: Axes | None = None) -> Axes:
     axes = ax if ax is not None else new_axes()
     swing = swing_of(prediction)
     distance = np.linspace(0.6 * swing.static, 2.2 * swing.static, 400)
-    curves = pair_curves(model_of(prediction))
+    curves = pair_curves(pair_model(prediction.case.potential, prediction.crystal))
     inner: list[Array] = []
     for k, curve in enumerate(curves):
         energy = curve.energy(distance)
@@ -63,6 +66,42 @@ def plot_pair_curves(prediction: Prediction, *, ax: Axes | None = None) -> Axes:
     _range(axes, inner)
     legend(axes)
     return axes
+
+
+def plot_crystal_energy(prediction: Prediction, *, ax: Axes | None = None) -> Axes:
+    """Draw the energy of the whole crystal at rest against its nearest-neighbour distance.
+
+    The cell is scaled uniformly, inner coordinates kept as fractions; U + PV per formula unit, in eV
+    above its minimum, beside the parabola of the same curvature: the difference is why heat expands
+    the crystal.
+    """
+    axes = ax if ax is not None else new_axes()
+    swing = swing_of(prediction)
+    scale = np.linspace(np.log(0.88), np.log(1.22), 240)
+    energy, curvature = _energy_over(prediction, scale)
+    distance = swing.static * np.exp(scale)
+    parabola = 0.5 * curvature * (np.exp(scale) - 1.0) ** 2
+    axes.plot(distance, energy, color=BLUE, linewidth=1.8, label="crystal")
+    axes.plot(
+        distance, parabola, color=GREY, linestyle="-.", linewidth=1.2, label="parabola of the same curvature"
+    )
+    _mark(axes, swing)
+    dress(axes, x="Nearest-neighbour distance / Å", y="Energy above rest / eV per formula unit")
+    axes.set_xlim(float(distance[0]), float(distance[-1]))
+    axes.set_ylim(0.0, 1.15 * float(np.nanmax(energy[scale > 0.0])))
+    legend(axes)
+    return axes
+
+
+def _energy_over(prediction: Prediction, scale: Array) -> tuple[Array, float]:
+    """Return U + PV above its value at rest, and its second derivative in the scale; per formula unit."""
+    crystal = prediction.static.crystal
+    surface = scaled_energy(pair_model(prediction.case.potential, prediction.crystal), crystal)
+    press = prediction.case.conditions.pressure / GPA_PER_EV_A3 * crystal.volume
+    rest = surface.derivatives(np.zeros(1), 2)[:, 0]
+    energy = surface.derivatives(scale, 0)[0] - rest[0] + press * (np.exp(3.0 * scale) - 1.0)
+    curvature = float(rest[2]) + 9.0 * press
+    return energy / crystal.formula_units, (curvature - float(rest[1]) - 3.0 * press) / crystal.formula_units
 
 
 def swing_of(prediction: Prediction) -> Swing:

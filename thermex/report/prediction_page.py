@@ -37,7 +37,7 @@ from thermex.report.page import (
     preformatted,
     word_table,
 )
-from thermex.report.pair_figures import plot_pair_curves
+from thermex.report.pair_figures import plot_crystal_energy, plot_pair_curves
 from thermex.report.style import svg_bytes
 from thermex.report.table import best_alpha, chosen_rows, fields, legend
 from thermex.report.words import heading, limits, validity
@@ -240,11 +240,22 @@ def _diagonal(tensor: Any) -> str:
 
 
 def _pairs(prediction: Prediction) -> str:
-    picture = _picture(
-        plot_pair_curves(prediction),
-        "Pair energy against distance for every pair of ions or atoms, with the static distance of nearest "
-        "neighbours, their mean distance when hot and the spread of the vibration",
-        "Pair energy, charges included. Spread: root mean square along the bond of nearest neighbours, atoms taken "
-        "as moving independently.",
+    spread = (
+        "Spread: root mean square along the bond of nearest neighbours, atoms taken as moving independently."
     )
-    return gallery([picture])
+    pictures = [
+        _picture(
+            plot_pair_curves(prediction),
+            "Pair energy against distance for every pair of ions or atoms, with the static distance of nearest "
+            "neighbours, their mean distance when hot and the spread of the vibration",
+            f"Pair energy, charges included. {spread}",
+        ),
+        _picture(
+            plot_crystal_energy(prediction),
+            "Energy of the whole crystal against its nearest-neighbour distance, beside a parabola of the same "
+            "curvature",
+            "All pairs summed, the cell scaled uniformly. The well is flatter outside than inside: bonds weaken as "
+            "the cell grows, and heat pushes the mean distance out.",
+        ),
+    ]
+    return gallery(pictures)

@@ -270,8 +270,12 @@ def _sources(beside: Beside, shown: Sequence[Field], width: int) -> list[str]:
 
 
 def wrapped(sentences: Sequence[str], width: int) -> list[str]:
-    """Break each sentence into lines of at most ``width`` characters, continuation indented."""
+    """Break each sentence into lines of at most ``width`` characters, continuation indented.
+
+    What a terminal would act on (control characters) becomes a space.
+    """
     lines: list[str] = []
-    for sentence in sentences:
+    for raw in sentences:
+        sentence = "".join(c if c.isprintable() else " " for c in raw)
         lines += textwrap.wrap(sentence, width, subsequent_indent="  ", break_long_words=True) or [""]
     return lines
