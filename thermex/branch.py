@@ -19,7 +19,7 @@ from thermex.mesh import Mesh, divisions_for, graded, stability_probes
 Array = NDArray[np.float64]
 
 #: Width in ln(scale) and number of volumes of each window of the first survey.
-WINDOW, POINTS = 0.02, 6
+WINDOW, POINTS = 0.03, 7
 
 #: Largest ln(scale) above the static lattice that is looked at.
 FARTHEST = 0.25

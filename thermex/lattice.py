@@ -17,9 +17,9 @@ from numpy.typing import NDArray
 
 from thermex.crystal.crystal import Crystal
 from thermex.free_energy import Term
-from thermex.phonons import MassWeighting, direct, interpolate, supercell
+from thermex.phonons import Dynamics, MassWeighting, Supercell, direct, interpolate, supercell
 from thermex.potential.dynamical import direct_force_constants, folded_bonds
-from thermex.potential.lattice_sums import bond_table, radial_of
+from thermex.potential.lattice_sums import BondTable, bond_table, radial_of
 from thermex.potential.model import PairModel
 from thermex.static import ScaledEnergy
 
@@ -80,11 +80,17 @@ def _even(values: Array) -> tuple[int, int, int]:
 
 @dataclass(frozen=True, slots=True)
 class UniformLattice:
-    """A cubic crystal with fixed sites under a pair model."""
+    """A cubic crystal with fixed sites under a pair model (build it with :func:`uniform_lattice`)."""
 
     model: PairModel
     energy: ScaledEnergy
     supercells: Supercells
+    scaled: Mapping[float, Dynamics]
+    """Exponent → Φₙ(q) of that inverse power at x = 0, through phonopy."""
+    cell: Supercell
+    """Supercell of the short-ranged rest."""
+    table: BondTable
+    """Bonds of the short-ranged rest at x = 0."""
 
     @property
     def crystal(self) -> Crystal:
@@ -98,19 +104,11 @@ class UniformLattice:
 
     def motion(self, points: Array) -> Motion:
         """Return the dynamical matrices through phonopy; see :class:`Lattice`."""
-        origin = self.model.particles(self.crystal)
-        scaled = {
-            n: interpolate(self.model.power_model(n), origin, self._repeat(n))(points)
-            for n in self.model.powers()
-        }
-        if not self._has_short:
-            return self._assembled(scaled, None)
-        cell = supercell(origin, self.supercells.short)
-        table = bond_table(self.model.short_model(), origin)
+        scaled = {n: dynamics(points) for n, dynamics in self.scaled.items()}
+        size, repeat = len(self.cell.shift), self.supercells.short
 
         def short(scale: float) -> Complex:
-            folded = folded_bonds(radial_of(table, scale), origin.size, self.supercells.short)
-            return cell.dynamics(folded)(points)
+            return self.cell.dynamics(folded_bonds(radial_of(self.table, scale), size, repeat))(points)
 
         return self._assembled(scaled, short)
 
@@ -118,33 +116,40 @@ class UniformLattice:
         """Return the dynamical matrices by direct and Ewald sums."""
         origin = self.model.particles(self.crystal)
         scaled = {n: direct(self.model.power_model(n), origin)(points) for n in self.model.powers()}
-        if not self._has_short:
-            return self._assembled(scaled, None)
-        table = bond_table(self.model.short_model(), origin)
         wave = 2.0 * np.pi * points @ np.linalg.inv(self.crystal.lattice).T
 
         def short(scale: float) -> Complex:
-            return direct_force_constants(radial_of(table, scale), origin.size, wave / scale)
+            return direct_force_constants(radial_of(self.table, scale), origin.size, wave / scale)
 
         return self._assembled(scaled, short)
 
-    @property
-    def _has_short(self) -> bool:
-        model = self.model.short_model()
-        return bool(model.interactions or model.springs)
-
-    def _repeat(self, exponent: float) -> tuple[int, int, int]:
-        return self.supercells.short if exponent == 1.0 or exponent > 9.0 else self.supercells.dispersion
-
-    def _assembled(self, scaled: Mapping[float, Complex], short: Callable[[float], Complex] | None) -> Motion:
+    def _assembled(self, scaled: Mapping[float, Complex], short: Callable[[float], Complex]) -> Motion:
         """Add the powers, Φₙ(x) = Φₙ(0) e^{−(n+2)x}, to the short-ranged rest summed at each x."""
         weighting = MassWeighting(self.crystal.masses)
+        has_short = len(self.table.bonds.first) > 0 or len(self.table.own.energy) > 0
 
         def motion(x: Array) -> Complex:
             scale = float(x[0])
             parts = [np.exp(-(n + 2.0) * scale) * values for n, values in scaled.items()]
-            if short is not None:
+            if has_short or not parts:
                 parts.append(short(np.exp(scale)))
             return weighting.dynamical(np.asarray(sum(parts)))
 
         return motion
+
+
+def uniform_lattice(model: PairModel, energy: ScaledEnergy, supercells: Supercells) -> UniformLattice:
+    """Do every lattice sum that serves all volumes, once, at the crystal of ``energy``."""
+    origin = model.particles(energy.crystal)
+    repeats = {
+        n: supercells.short if n == 1.0 or n > 9.0 else supercells.dispersion for n in model.powers()
+    }
+    # one phonopy object a repetition serves all terms; the charged one keeps its dipole term to itself
+    neutral = {r for n, r in repeats.items() if n != 1.0} | {supercells.short}
+    cells = {r: supercell(origin, r) for r in neutral}
+    scaled = {
+        n: interpolate(model.power_model(n), origin, supercell(origin, r) if n == 1.0 else cells[r])
+        for n, r in repeats.items()
+    }
+    table = bond_table(model.short_model(), origin)
+    return UniformLattice(model, energy, supercells, scaled, cells[supercells.short], table)

@@ -123,7 +123,7 @@ def stability_probes(crystal: Crystal) -> Array:
     along the zone, and the corners and face centres of the zone: a half-shifted mesh can miss thin
     sheets of soft shear modes.
     """
-    directions = [d for d in product((-1, 0, 1), repeat=3) if d > (0, 0, 0)]
+    directions = _distinct_directions(crystal)
     conventional = np.linalg.inv(crystal.conventional @ crystal.lattice).T  # rows: reciprocal / 2π
     to_primitive = crystal.lattice.T  # q_fractional = q_cartesian/2π · lattice^T
     cartesian = np.array(directions, dtype=float) @ conventional
@@ -136,6 +136,26 @@ def stability_probes(crystal: Crystal) -> Array:
     inside = first_zone(crystal.lattice, points)
     away = np.linalg.norm(inside @ np.linalg.inv(crystal.lattice).T, axis=1) > 0.9 * radius
     return points[away]
+
+
+def _distinct_directions(crystal: Crystal) -> list[tuple[int, int, int]]:
+    """Return one of each set of equivalent ⟨100⟩, ⟨110⟩, ⟨111⟩ directions, conventional reciprocal."""
+    to_primitive = np.linalg.inv(crystal.conventional).T @ np.eye(3)
+    operations = [np.linalg.inv(r).T for r in np.unique(crystal.rotations, axis=0)]
+    kept: list[tuple[int, int, int]] = []
+    seen: set[tuple[float, ...]] = set()
+    for direction in product((-1, 0, 1), repeat=3):
+        if direction <= (0, 0, 0):
+            continue
+        vector = np.array(direction) @ to_primitive
+        if tuple(np.round(vector, 6) + 0.0) in seen:
+            continue
+        kept.append(direction)
+        for operation in operations:
+            image = operation @ vector
+            seen.add(tuple(np.round(image, 6) + 0.0))
+            seen.add(tuple(np.round(-image, 6) + 0.0))
+    return kept
 
 
 def first_zone(lattice: Array, q: Array) -> Array:

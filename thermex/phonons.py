@@ -93,11 +93,11 @@ def supercell(particles: Particles, repeat: tuple[int, int, int]) -> Supercell:
     return Supercell(phonopy, particles.lattice, repeat, owner, index, shift)
 
 
-def interpolate(model: PairModel, particles: Particles, repeat: tuple[int, int, int]) -> Dynamics:
+def interpolate(model: PairModel, particles: Particles, cell: Supercell) -> Dynamics:
     """Hand the force constants of a supercell, all lattice sums complete, to phonopy."""
-    folded = supercell_force_constants(model, particles, repeat)
+    folded = supercell_force_constants(model, particles, cell.repeat)
     charges = np.array([model.kinds[k].charge for k in particles.kind])
-    return supercell(particles, repeat).dynamics(folded, charges if model.has_charges else None)
+    return cell.dynamics(folded, charges if model.has_charges else None)
 
 
 def _offsets(particles: Particles) -> Array:
