@@ -147,3 +147,16 @@ def test_absent_numbers_have_one_sign() -> None:
 def test_negative_zero_is_zero() -> None:
     assert numbers.fixed(-1e-9, 3) == "0.000"
     assert numbers.percent(-1e-9) == "0.0"
+
+
+def test_repr_is_one_line_with_the_main_number() -> None:
+    prediction = invented_prediction()
+    said = repr(prediction)
+    assert "\n" not in said and "MgO" in said and "valid to 1900 K" in said
+    assert f"α(300 K) = {prediction.alpha_linear_per_K[6] * 1e6:.2f}·10⁻⁶/K" in said
+
+
+def test_notebook_view_is_escaped() -> None:
+    html = invented_prediction("<b>x</b>")._repr_html_()
+    assert "&lt;b&gt;x&lt;/b&gt;" in html and "<b>x" not in html
+    assert "<table" in html and "not a design allowable" in html

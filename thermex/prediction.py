@@ -239,3 +239,15 @@ class Prediction:
         if good.sum() < 2 or not grid[0] <= temperature_K <= grid[-1]:
             return float("nan")
         return float(PchipInterpolator(grid, values[good])(temperature_K))
+
+    def __repr__(self) -> str:
+        """Say in one line what was predicted."""
+        from thermex.report.summary import summary_line
+
+        return summary_line(self)
+
+    def _repr_html_(self) -> str:
+        """Show a notebook the heading, some rows and the range of validity."""
+        from thermex.report.summary import summary_html
+
+        return summary_html(self)
