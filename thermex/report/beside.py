@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -53,3 +54,57 @@ class Beside:
     def curves_of(self, quantity: str) -> tuple[Curve, ...]:
         """Return the series of one quantity."""
         return tuple(curve for curve in self.curves if curve.quantity == quantity)
+
+
+#: How far from a single measured temperature a value still stands for it, K.
+SAME_TEMPERATURE_K = 2.5
+#: Longest gap between two measured temperatures that a straight line may bridge: K, or a share of T.
+LONGEST_GAP_K, LONGEST_GAP_SHARE = 100.0, 0.3
+
+
+def lay_beside(temperature_K: Array, curves: Sequence[Curve], sources: Sequence[str]) -> Beside:
+    """Lay measured series beside the temperatures of a prediction.
+
+    At each temperature the first series of a quantity (in the order given, best first) that has a
+    value there is taken: one within 2.5 K, or a straight line between two neighbours no further
+    apart than 100 K or 30 % of T. Series along one axis are drawn but not laid into columns.
+    """
+    columns: dict[str, Column] = {}
+    for quantity in dict.fromkeys(curve.quantity for curve in curves if not curve.axis):
+        chosen = [curve for curve in curves if curve.quantity == quantity and not curve.axis]
+        column = _column(temperature_K, chosen)
+        if np.isfinite(column.value).any():
+            columns[quantity] = column
+    return Beside(tuple(sources), columns, tuple(curves))
+
+
+def _column(temperature_K: Array, curves: Sequence[Curve]) -> Column:
+    value = np.full(len(temperature_K), np.nan)
+    source = np.zeros(len(temperature_K), dtype=int)
+    for curve in curves:
+        found = value_at(curve, temperature_K)
+        new = np.isnan(value) & np.isfinite(found)
+        value[new], source[new] = found[new], curve.source
+    return Column(value, tuple(int(number) for number in source))
+
+
+def value_at(curve: Curve, temperature_K: Array) -> Array:
+    """Return the measured value at each temperature, NaN where the series does not reach; shape (nT,)."""
+    good = np.isfinite(curve.value) & np.isfinite(curve.temperature_K)
+    order = np.argsort(curve.temperature_K[good], kind="stable")
+    grid, values = curve.temperature_K[good][order], curve.value[good][order]
+    if not grid.size:
+        return np.full(len(temperature_K), np.nan)
+    above = np.clip(np.searchsorted(grid, temperature_K), 1, max(len(grid) - 1, 1))
+    below = above - 1
+    above = np.minimum(above, len(grid) - 1)
+    gap = grid[above] - grid[below]
+    inside = (temperature_K >= grid[below]) & (temperature_K <= grid[above])
+    bridged = inside & (gap <= np.maximum(LONGEST_GAP_K, LONGEST_GAP_SHARE * temperature_K))
+    nearest = np.where(
+        np.abs(grid[below] - temperature_K) <= np.abs(grid[above] - temperature_K), below, above
+    )
+    close = np.abs(grid[nearest] - temperature_K) <= SAME_TEMPERATURE_K
+    line: Array = np.interp(temperature_K, grid, values)
+    found: Array = np.where(bridged, line, np.where(close, values[nearest], np.nan))
+    return found
