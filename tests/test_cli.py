@@ -11,7 +11,7 @@ from pathlib import Path
 
 import pytest
 
-from tests.synthetic import invented_prediction
+from tests.synthetic import invented_prediction, measured_beside
 from thermex.cli import main
 from thermex.commands.interruption import Interrupted
 from thermex.commands.progress import ProgressLine, duration, progress_on, progress_text
@@ -25,6 +25,7 @@ def predicted(monkeypatch: pytest.MonkeyPatch) -> None:
     """Put an invented prediction in place of reading and computing."""
     monkeypatch.setattr("thermex.case.reader.load_case", lambda path: invented_prediction().case)
     monkeypatch.setattr("thermex.expansion.predict", lambda case, *, progress=None: invented_prediction())
+    monkeypatch.setattr("thermex.report.beside.beside_of", measured_beside)
 
 
 @pytest.fixture
@@ -174,7 +175,7 @@ def test_wrong_words_are_status_two(words: list[str], capsys: pytest.CaptureFixt
     assert "Traceback" not in capsys.readouterr().err
 
 
-@pytest.mark.parametrize("words", [["--help"], ["predict", "--help"], ["materials", "--help"], ["--version"]])
+@pytest.mark.parametrize("words", [["--help"], ["predict", "--help"], ["--version"]])
 def test_help_and_version(words: list[str], capsys: pytest.CaptureFixture[str]) -> None:
     assert main(words) == 0
     assert "thermex" in capsys.readouterr().out

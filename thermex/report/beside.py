@@ -2,11 +2,15 @@
 
 from __future__ import annotations
 
+import warnings
 from collections.abc import Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
+
+from thermex.errors import ThermexWarning
+from thermex.prediction import Prediction
 
 Array = NDArray[np.float64]
 
@@ -54,6 +58,13 @@ class Beside:
     def curves_of(self, quantity: str) -> tuple[Curve, ...]:
         """Return the series of one quantity."""
         return tuple(curve for curve in self.curves if curve.quantity == quantity)
+
+
+def beside_of(prediction: Prediction) -> Beside:
+    """Return what was measured on the material that the case names; empty when it names none."""
+    if prediction.case.measured is not None:
+        warnings.warn("measured values cannot be read yet; none are compared", ThermexWarning, stacklevel=2)
+    return Beside()
 
 
 #: How far from a single measured temperature a value still stands for it, K.
