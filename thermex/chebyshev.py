@@ -82,10 +82,10 @@ def _contract(coefficients: Array, factors: list[Array]) -> Array:
 
 
 def without_highest(coefficients: Array) -> Array:
-    """Return coefficients with the highest order along every axis set to zero (for error estimates)."""
+    """Return coefficients with the two highest orders along every axis set to zero (error estimates)."""
     out = coefficients.copy()
     for axis in range(1, out.ndim):
         index = [slice(None)] * out.ndim
-        index[axis] = slice(-1, None)
+        index[axis] = slice(-2, None)
         out[tuple(index)] = 0.0
     return out

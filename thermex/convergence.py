@@ -12,7 +12,7 @@ from thermex.branch import long_wave_scaled
 from thermex.chebyshev import Box
 from thermex.constants import BOLTZMANN, PLANCK_THZ
 from thermex.equilibrium import Load, States, refine, states
-from thermex.free_energy import FreeEnergy, Vibrations
+from thermex.free_energy import FreeEnergy, Slice, TermValues, Vibrations
 from thermex.lattice import Lattice, Motion
 from thermex.mesh import Mesh, divisions_for, graded
 from thermex.prediction import NumericalError
@@ -22,15 +22,18 @@ Array = NDArray[np.float64]
 #: Relative error that rounding and the lattice sums leave in α at least.
 FLOOR = 3e-7
 
-#: How much of the difference between two meshes is left as error of the finer one: a graded mesh
-#: converges as N⁻⁹, so (3/4)⁹ = 0.08 of it; a quarter is stated.
-MESH_SHARE = 0.25
+#: How much of the difference between two meshes is stated as error of the finer one. A graded mesh
+#: converges as N⁻⁹ once it resolves the modes, which would leave (3/4)⁹ = 0.08 of it.
+MESH_SHARE = 0.6
 
-#: How much of the last Chebyshev coefficients is left as error: they fall about fivefold each.
-VOLUME_SHARE = 0.3
+#: The same where the branch runs into soft sheets of modes, on which meshes converge slowly.
+SOFT_SHARE = 2.0
 
-#: Temperatures below this fraction of the highest phonon temperature use the twice-graded mesh.
-COLD = 1.0 / 40.0
+#: How much of the two last Chebyshev coefficients is left as error: they fall three- to sixfold each.
+VOLUME_SHARE = 0.1
+
+#: Share of the interpolation difference on a small mesh that is stated as error of the supercell.
+SUPERCELL_SHARE = 1.5
 
 
 @dataclass(frozen=True, slots=True)
@@ -86,25 +89,39 @@ def build(lattice: Lattice, box: Box, divisions: tuple[int, int, int], order: in
     )
 
 
+def build_plain(lattice: Lattice, box: Box, divisions: tuple[int, int, int]) -> FreeEnergy:
+    """Compute phonons on one graded mesh at every cell of a box, with no companion."""
+    mesh = graded(lattice.crystal, divisions, 1)
+    found = frequencies_over(lattice.motion(mesh.points), box, mesh)
+    return FreeEnergy((lattice.static, Vibrations(box, np.maximum(found, 1e-9), mesh.weights)))
+
+
 def three_quarters(divisions: tuple[int, int, int]) -> tuple[int, int, int]:
     """Return even divisions of about three quarters the size, at least 4."""
     a, b, c = (max(2 * round(0.375 * n), 4) for n in divisions)
     return (a, b, c)
 
 
-def solve(surface: Surface, load: Load, temperature: Array, start: Array) -> Solution:
+def solve(surface: Surface, load: Load, temperature: Array, start: Array, mesh_share: float) -> Solution:
     """Find the minima and α on a surface and on its companions; the differences are the errors."""
     best = _states(surface.best, load, temperature, start)
     coarse = _states(surface.coarse_mesh, load, temperature, best.x)
     fewer = _states(surface.fewer_volumes, load, temperature, best.x)
     zero = np.zeros(len(temperature))
     error = NumericalError(
-        MESH_SHARE * relative(coarse, best),
-        VOLUME_SHARE * relative(fewer, best),
+        mesh_share * envelope(temperature, relative(coarse, best)),
+        VOLUME_SHARE * envelope(temperature, relative(fewer, best)),
         zero,
         zero + FLOOR,
     )
     return Solution(best, error, surface)
+
+
+def envelope(temperature: Array, error: Array) -> Array:
+    """Return the largest error from T/1.5 to T: a difference may pass through zero on its way."""
+    ratio = np.maximum(temperature, 1e-9)[:, None] / np.maximum(temperature, 1e-9)[None, :]
+    near = (ratio >= 1.0) & (ratio < 1.5)
+    return np.asarray(np.where(near, error[None, :], 0.0).max(axis=1))
 
 
 def _states(free_energy: FreeEnergy, load: Load, temperature: Array, start: Array) -> States:
@@ -119,17 +136,41 @@ def relative(other: States, best: States) -> Array:
     return np.asarray(np.where(best.temperature > 0.0, axes, 0.0))
 
 
-def supercell_error(lattice: Lattice, box: Box, load: Load, temperature: Array, start: Array) -> Array:
-    """Return the relative error of α by phonopy's interpolation, shape (nT,).
+@dataclass(frozen=True, slots=True)
+class _Difference:
+    """One vibrational term less another, as a term."""
 
-    α is solved twice on one small mesh: with phonopy's Φ(q), and with the direct lattice sums.
+    plus: Vibrations
+    minus: Vibrations
+
+    def at(self, temperature: Array) -> Slice:
+        first, second = self.plus.at(temperature), self.minus.at(temperature)
+
+        def evaluate(x: Array) -> TermValues:
+            a, b = first(x), second(x)
+            return TermValues(*(getattr(a, f) - getattr(b, f) for f in TermValues.__slots__))
+
+        return evaluate
+
+
+def supercell_error(lattice: Lattice, solution: Solution, load: Load) -> Array:
+    """Return the relative error of α by interpolation between commensurate q, shape (nT,).
+
+    Phonons on one small mesh are computed twice, with phonopy's Φ(q) and with the direct lattice
+    sums; the difference of the two free energies is added to the surface and α solved again.
     """
-    mesh = graded(lattice.crystal, divisions_for(lattice.crystal, 4))
-    pair = []
-    for motion in (lattice.motion(mesh.points), lattice.exact_motion(mesh.points)):
-        vibrations = Vibrations(box, np.maximum(frequencies_over(motion, box, mesh), 1e-9), mesh.weights)
-        pair.append(_states(FreeEnergy((lattice.static, vibrations)), load, temperature, start))
-    return relative(pair[0], pair[1])
+    box = Box(solution.surface.box.window, tuple(min(n, 5) for n in solution.surface.box.counts))
+    mesh = graded(lattice.crystal, divisions_for(lattice.crystal, 6))
+    found = [
+        np.maximum(frequencies_over(motion, box, mesh), 1e-9)
+        for motion in (lattice.exact_motion(mesh.points), lattice.motion(mesh.points))
+    ]
+    exact, interpolated = (Vibrations(box, f, mesh.weights) for f in found)
+    shifted = solution.surface.best.plus(_Difference(exact, interpolated))
+    temperature, start = solution.states.temperature, solution.states.x
+    best = _states(solution.surface.best, load, temperature, start)
+    difference = relative(_states(shifted, load, temperature, best.x), best)
+    return SUPERCELL_SHARE * envelope(temperature, difference)
 
 
 def joined(warm: Solution, cold: Solution, use_cold: Array) -> Solution:

@@ -52,6 +52,10 @@ class Lattice(Protocol):
         ...
 
 
+#: Largest number of atoms in a supercell.
+MOST = 2000
+
+
 @dataclass(frozen=True, slots=True)
 class Supercells:
     """Primitive cells along each axis in the force constants given to phonopy, by kind of term."""
@@ -65,16 +69,19 @@ class Supercells:
 def supercells_for(crystal: Crystal, span: float) -> Supercells:
     """Return supercells whose height is at least ``span`` times the mean distance (V/n)^{1/3}.
 
-    Dispersion terms get one and a half times that.
+    Dispersion terms get one and a half times that. No supercell holds more than ``MOST`` centres.
     """
     spacing = (crystal.volume / crystal.size) ** (1.0 / 3.0)
     heights = 1.0 / np.linalg.norm(np.linalg.inv(crystal.lattice), axis=0)
-    short = _even(span * spacing / heights)
-    return Supercells(short, _even(1.5 * span * spacing / heights))
+    short = _even(span * spacing / heights, crystal.size)
+    return Supercells(short, _even(1.5 * span * spacing / heights, crystal.size))
 
 
-def _even(values: Array) -> tuple[int, int, int]:
+def _even(values: Array, size: int) -> tuple[int, int, int]:
+    """Round up to even counts, then shrink the largest until the supercell is small enough."""
     counts = np.maximum(2 * np.ceil(np.round(values, 6) / 2.0), 2).astype(int)
+    while np.prod(counts) * size > MOST and counts.max() > 2:
+        counts[counts == counts.max()] -= 2
     return (int(counts[0]), int(counts[1]), int(counts[2]))
 
 

@@ -108,6 +108,25 @@ def _with_long_wave(crystal: Crystal, divisions: tuple[int, int, int], points: A
     return Mesh(divisions, points * stretch[:, None], weights, 1.0 / stretch)
 
 
+def long_wave_sphere(crystal: Crystal) -> Mesh:
+    """Return directions over half a sphere at the long-wave radius, weights for the mean over the sphere.
+
+    Gauss–Legendre in cos θ times equal steps in φ; ``shrink`` is 1.
+    """
+    cosines, weights = np.polynomial.legendre.leggauss(24)
+    upper = cosines > 0.0
+    cosines, weights = cosines[upper], weights[upper]
+    angles = 2.0 * np.pi * (np.arange(32) + 0.5) / 32
+    sines = np.sqrt(1.0 - cosines**2)
+    x = sines[:, None] * np.cos(angles)
+    y = sines[:, None] * np.sin(angles)
+    z = np.broadcast_to(cosines[:, None], x.shape)
+    directions = np.stack([x, y, z], axis=-1).reshape(-1, 3)
+    radius = LONG_WAVE / crystal.volume ** (1.0 / 3.0)
+    share = np.repeat(weights, len(angles)) / (weights.sum() * len(angles))
+    return Mesh((1, 1, 1), directions * radius @ crystal.lattice.T, share, np.ones(len(share)))
+
+
 def divisions_for(crystal: Crystal, along_shortest: int) -> tuple[int, int, int]:
     """Return even divisions in proportion to the reciprocal lengths, equal for equivalent axes."""
     reciprocal = np.linalg.norm(np.linalg.inv(crystal.lattice), axis=0)
