@@ -14,7 +14,7 @@ import pytest
 from tests.synthetic import invented_prediction, measured_beside
 from thermex.cli import main
 from thermex.commands.interruption import Interrupted
-from thermex.commands.progress import ProgressLine, duration, progress_on, progress_text
+from thermex.commands.progress import ProgressLine, duration, progress_on, progress_text, silent
 from thermex.errors import Fault, InputError, ThermexWarning, UnstableCrystalError
 
 Raise = Callable[[BaseException], None]
@@ -229,9 +229,9 @@ def test_progress_is_quiet_for_two_seconds_then_tells_the_time_left() -> None:
 
 def test_progress_only_on_a_terminal() -> None:
     with progress_on(io.StringIO()) as progress:
-        assert progress is None
+        assert progress is silent
     with progress_on(Terminal()) as progress:
-        assert progress is not None
+        assert isinstance(progress, ProgressLine)
 
 
 def test_words_of_progress() -> None:

@@ -81,6 +81,7 @@ def test_at_most_sixteen_rows_ends_kept_measured_ones_preferred() -> None:
     assert len(rows) <= 16
     assert (rows[0], rows[-1]) == (0, len(prediction.temperature_K) - 1)
     assert rows == sorted(set(rows))
+    assert {300.0, 1900.0} <= set(prediction.temperature_K[rows])
     measured = set(np.flatnonzero(np.isfinite(beside.columns["alpha_linear_per_K"].value)))
     assert measured <= set(rows)
 

@@ -76,11 +76,15 @@ def duration(seconds: float) -> str:
     return f"{whole // 3600} h {whole % 3600 // 60} min"
 
 
+def silent(stage: str, done: int, total: int) -> None:
+    """Take note of a step and say nothing."""
+
+
 @contextlib.contextmanager
-def progress_on(stream: TextIO) -> Iterator[Progress | None]:
-    """Give a progress callback for the stream when it is a terminal, None otherwise; wipe it at the end."""
+def progress_on(stream: TextIO) -> Iterator[Progress]:
+    """Give a progress callback: a line when the stream is a terminal, silent otherwise; wipe it at the end."""
     if not stream.isatty():
-        yield None
+        yield silent
         return
     line = ProgressLine(stream)
     try:

@@ -17,7 +17,7 @@ Array = NDArray[np.float64]
 COLOURS = (BLUE, VERMILION)
 POINTS = 500
 #: Width of the Gaussian that smooths the density of states, of the highest frequency.
-SMOOTHING = 0.008
+SMOOTHING = 0.014
 
 
 def plot_mode_gruneisen(prediction: Prediction, *, ax: Axes | None = None) -> Axes:

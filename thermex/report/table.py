@@ -71,21 +71,28 @@ def prediction_text(prediction: Prediction, beside: Beside, *, width: int = 100,
 def chosen_rows(prediction: Prediction, beside: Beside, most: int) -> list[int]:
     """Return the indices of the temperatures to show, at most ``most`` of them, ends included.
 
-    Among close temperatures one with a measured α is preferred.
+    Among close temperatures that of a room, the last valid one and those with a measured α come first.
     """
     size = len(prediction.temperature_K)
     if size <= most:
         return list(range(size))
-    spread = np.linspace(0, size - 1, most)
+    anchors = _anchors(prediction)
     measured = np.isfinite(beside.column("alpha_linear_per_K", size).value)
     reach = (size - 1) / (most - 1) / 2.0
     picked = [0]
-    for middle in spread[1:-1]:
-        near = [k for k in range(size) if abs(k - middle) < reach and picked[-1] < k < size - 1]
-        better = [k for k in near if measured[k]] or near
-        if better:
-            picked.append(min(better, key=lambda k: abs(k - middle)))
+    for middle in np.linspace(0, size - 1, most)[1:-1]:
+        near = [k for k in range(picked[-1] + 1, size - 1) if abs(k - middle) <= reach]
+        if near:
+            picked.append(min(near, key=lambda k: (k not in anchors, not measured[k], abs(k - middle))))
     return [*picked, size - 1]
+
+
+def _anchors(prediction: Prediction) -> set[int]:
+    """Return the temperature nearest to 298.15 K and the last one that has a result."""
+    kelvin = prediction.temperature_K
+    good = np.flatnonzero(np.isfinite(prediction.alpha_linear_per_K))
+    room = int(np.argmin(np.abs(kelvin - 298.15)))
+    return {room, int(good[-1])} if good.size else {room}
 
 
 def fields(prediction: Prediction, beside: Beside, rows: Sequence[int]) -> list[Field]:
@@ -143,7 +150,8 @@ def _alpha_fields(prediction: Prediction, rows: Sequence[int]) -> list[Field]:
             Field(f"α_{axis}", "10⁻⁶/K", _each(rows, values, micro))
             for axis, values in prediction.alpha_axis_per_K.items()
         ] + [Field("α avg.", "10⁻⁶/K", found[0].cells)]
-    found.append(Field("±", "%", _each(rows, prediction.alpha_relative_error, error_percent)))
+    error = np.where(prediction.alpha_linear_per_K == 0.0, np.nan, prediction.alpha_relative_error)
+    found.append(Field("±", "%", _each(rows, error, error_percent)))
     if prediction.rule is not None:
         found.append(
             Field("rule", "%", _each(rows, prediction.rule.overestimate, lambda v: percent(v, 0)), rank=4)
