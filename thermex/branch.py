@@ -104,7 +104,7 @@ def survey(lattice: Lattice, load: Load, highest_K: float) -> Branch:
                 return _ended(xs, ts, limit, "phonons turn imaginary")
             found = [sampler.all_frequencies(x) for x in Box(np.array([[low, high]]), (POINTS,)).grid[:, 0]]
         box = Box(np.array([[low, high]]), (POINTS,))
-        surface = FreeEnergy((lattice.static, _vibrations(sampler, box, found)))
+        surface = FreeEnergy((lattice.static_over(box), _vibrations(sampler, box, found)))
         fine = np.linspace(low, high, 17)
         temperatures = temperature_at(surface, fine, load, ceiling)
         for x, t in zip(fine, temperatures, strict=True):

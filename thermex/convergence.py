@@ -80,9 +80,9 @@ def build(lattice: Lattice, box: Box, divisions: tuple[int, int, int], order: in
     fine = Vibrations(box, found[:, :size], mesh.weights)
     rough = Vibrations(box, found[:, size:], coarse.weights)
     return Surface(
-        FreeEnergy((lattice.static, fine)),
-        FreeEnergy((lattice.static, rough)),
-        FreeEnergy((lattice.static, replace(fine, truncated=True))),
+        FreeEnergy((lattice.static_over(box), fine)),
+        FreeEnergy((lattice.static_over(box), rough)),
+        FreeEnergy((lattice.static_over(box), replace(fine, truncated=True))),
         mesh,
         box,
         found[:, :size],
@@ -93,7 +93,7 @@ def build_plain(lattice: Lattice, box: Box, divisions: tuple[int, int, int]) -> 
     """Compute phonons on one graded mesh at every cell of a box, with no companion."""
     mesh = graded(lattice.crystal, divisions, 1)
     found = frequencies_over(lattice.motion(mesh.points), box, mesh)
-    return FreeEnergy((lattice.static, Vibrations(box, np.maximum(found, 1e-9), mesh.weights)))
+    return FreeEnergy((lattice.static_over(box), Vibrations(box, np.maximum(found, 1e-9), mesh.weights)))
 
 
 def three_quarters(divisions: tuple[int, int, int]) -> tuple[int, int, int]:

@@ -15,6 +15,7 @@ from typing import Protocol
 import numpy as np
 from numpy.typing import NDArray
 
+from thermex.chebyshev import Box
 from thermex.crystal.crystal import Crystal
 from thermex.free_energy import Term
 from thermex.phonons import Dynamics, MassWeighting, Supercell, direct, interpolate, supercell
@@ -38,9 +39,8 @@ class Lattice(Protocol):
         """The crystal at x = 0, the static minimum."""
         ...
 
-    @property
-    def static(self) -> Term:
-        """The static energy as a term of the free energy."""
+    def static_over(self, box: Box) -> Term:
+        """The static energy as a term of the free energy, good over a box of strains."""
         ...
 
     def motion(self, points: Array) -> Motion:
@@ -104,9 +104,9 @@ class UniformLattice:
         """The crystal at x = 0."""
         return self.energy.crystal
 
-    @property
-    def static(self) -> Term:
-        """The static energy."""
+    def static_over(self, box: Box) -> Term:
+        """The static energy, exact everywhere."""
+        del box
         return self.energy
 
     def motion(self, points: Array) -> Motion:

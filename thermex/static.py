@@ -70,12 +70,6 @@ class ScaledEnergy:
 
         return temperature_free(energy)
 
-    def moved(self, x: float) -> ScaledEnergy:
-        """Return the same energy with the crystal at scale exp(x) as the new origin."""
-        shells = tuple(Shells(s.term, s.distances * np.exp(x), s.counts) for s in self.shells)
-        energies = self.energies * np.exp(-self.exponents * x)
-        return ScaledEnergy(self.crystal.strained(np.array([x])), self.exponents, energies, shells)
-
 
 def _logarithmic(radial: Array, r: Array) -> list[Array]:
     """Turn derivatives in r into derivatives in ln r (up to the third)."""
@@ -90,7 +84,7 @@ def _logarithmic(radial: Array, r: Array) -> list[Array]:
 
 
 def scaled_energy(model: PairModel, crystal: Crystal) -> ScaledEnergy:
-    """Prepare U(x) of a cubic crystal; the crystal given is the origin x = 0."""
+    """Prepare U(x) of a crystal scaled uniformly; the crystal given is the origin x = 0."""
     particles = model.particles(crystal)
     exponents, energies = [], []
     for n in model.powers():

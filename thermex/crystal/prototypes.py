@@ -41,9 +41,7 @@ class Prototype:
 
 PROTOTYPES: tuple[Prototype, ...] = (
     Prototype("rock salt", 523, ((0, 0, 0), (0.5, 0.5, 0.5)), (1, 1), aliases=("rocksalt", "halite")),
-    Prototype(
-        "caesium chloride", 517, ((0, 0, 0), (0.5, 0.5, 0.5)), (1, 1), aliases=("cesium chloride",)
-    ),
+    Prototype("caesium chloride", 517, ((0, 0, 0), (0.5, 0.5, 0.5)), (1, 1), aliases=("cesium chloride",)),
     Prototype(
         "zinc blende", 512, ((0, 0, 0), (0.25, 0.25, 0.25)), (1, 1), aliases=("zincblende", "sphalerite")
     ),
@@ -78,7 +76,9 @@ PROTOTYPES: tuple[Prototype, ...] = (
         {"u": 0.375},
         hexagonal=True,
     ),
-    Prototype("hcp", 488, ((1 / 3, 2 / 3, 0.25),), (1,), 1.633, hexagonal=True, aliases=("hexagonal close-packed",)),
+    Prototype(
+        "hcp", 488, ((1 / 3, 2 / 3, 0.25),), (1,), 1.633, hexagonal=True, aliases=("hexagonal close-packed",)
+    ),
     Prototype("rutile", 419, ((0, 0, 0), ("u", "u", 0)), (1, 2), 0.644, {"u": 0.305}),
     Prototype(
         "corundum", 460, ((0, 0, "z"), ("x", 0, 0.25)), (2, 3), 2.73, {"z": 0.352, "x": 0.306}, hexagonal=True
@@ -146,7 +146,9 @@ def site_counts(prototype: str) -> tuple[int, ...]:
     return find_prototype(prototype).counts
 
 
-def cell_of(prototype: Prototype, lattice: Mapping[str, float], inner: Mapping[str, float]) -> tuple[Array, Array, list[int]]:
+def cell_of(
+    prototype: Prototype, lattice: Mapping[str, float], inner: Mapping[str, float]
+) -> tuple[Array, Array, list[int]]:
     """Return the conventional cell: lattice (3, 3) Å, positions (n, 3) and the site of each atom.
 
     Parameters

@@ -42,7 +42,9 @@ def crystal_from_file(path: Path, masses: Mapping[str, float]) -> Crystal:
     except Exception as error:  # every reader of ASE fails in its own way
         reason = " ".join(str(error).split())[:200] or type(error).__name__
         raise InputError(
-            f"cannot be read as a structure ({reason})", where=path.name, fix="give a CIF or another file ASE reads"
+            f"cannot be read as a structure ({reason})",
+            where=path.name,
+            fix="give a CIF or another file ASE reads",
         ) from None
     return crystal_from_atoms(atoms[-1] if isinstance(atoms, list) else atoms, masses, path.name)
 
@@ -62,7 +64,9 @@ def crystal_from_atoms(atoms: Any, masses: Mapping[str, float], name: str = "ato
         FILE_TOLERANCE,
     )
     if crystal.size > MOST_ATOMS:
-        raise InputError(f"{crystal.size} atoms in the primitive cell", where=name, fix=f"at most {MOST_ATOMS}")
+        raise InputError(
+            f"{crystal.size} atoms in the primitive cell", where=name, fix=f"at most {MOST_ATOMS}"
+        )
     return crystal
 
 
@@ -83,7 +87,9 @@ def _refuse(atoms: Any, name: str) -> None:
         distances = atoms.get_all_distances(mic=True)
         np.fill_diagonal(distances, np.inf)
         if distances.min() < OVERLAP:
-            raise InputError(f"two atoms are {distances.min():.3f} Å apart", where=name, fix="remove the double")
+            raise InputError(
+                f"two atoms are {distances.min():.3f} Å apart", where=name, fix="remove the double"
+            )
 
 
 def to_atoms(crystal: Crystal) -> Any:

@@ -61,7 +61,9 @@ def crystal_of(
         standard = spglib.standardize_cell(cell, to_primitive=False, no_idealize=False, symprec=tolerance)
         primitive = spglib.standardize_cell(cell, to_primitive=True, no_idealize=False, symprec=tolerance)
     except Exception as error:
-        raise InputError(f"no symmetry was found ({error})", where=name, fix="look for overlapping atoms") from None
+        raise InputError(
+            f"no symmetry was found ({error})", where=name, fix="look for overlapping atoms"
+        ) from None
     if dataset is None or standard is None or primitive is None:
         raise InputError("no symmetry was found", where=name, fix="look for overlapping atoms")
     conventional = np.rint(standard[0] @ np.linalg.inv(primitive[0])).astype(np.int64)
@@ -138,9 +140,7 @@ def invariant_fields(lattice: Array, fractional: Array, rotations: Ints, transla
     return np.asarray(vectors[:, values > 0.5].T.reshape(-1, n, 3))
 
 
-def invariant_displacements(
-    lattice: Array, fractional: Array, rotations: Ints, translations: Array
-) -> Array:
+def invariant_displacements(lattice: Array, fractional: Array, rotations: Ints, translations: Array) -> Array:
     """Return the basis (k, n, 3) of symmetry-allowed inner displacements, rigid translations removed."""
     fields = invariant_fields(lattice, fractional, rotations, translations)
     n = len(fractional)

@@ -26,6 +26,9 @@ Array = NDArray[np.float64]
 #: η·r and G/2η at which both sums are stopped: exp(−36) = 2·10⁻¹⁶.
 SPAN = 6.0
 
+#: Largest order of E_p that is reached by recurrence for every x.
+RECURRENT = 8.0
+
 
 def split_parameter(volume: float, particles: int) -> float:
     """Return η (1/Å) that balances the two sums and scales with the cell."""
@@ -86,7 +89,7 @@ def exponential_integral(p: float, x: Array) -> Array:
     x = np.maximum(np.asarray(x, dtype=float), 1e-280)
     if p == 0.0:
         return np.asarray(np.exp(-x) / x)
-    small = x < 1.0
+    small = np.full(x.shape, True) if p <= RECURRENT else x < 1.0
     out = np.empty_like(x)
     out[small] = _by_recurrence(p, x[small])
     out[~small] = _by_fraction(p, x[~small])
@@ -94,7 +97,11 @@ def exponential_integral(p: float, x: Array) -> Array:
 
 
 def _by_recurrence(p: float, x: Array) -> Array:
-    """E_{p+1} = (e^{−x} − x E_p)/p upward from 0 < p₀ ≤ 1 (DLMF 8.19.12), stable for x < 1."""
+    """E_{p+1} = (e^{−x} − x E_p)/p upward from 0 < p₀ ≤ 1 (DLMF 8.19.12).
+
+    Each step multiplies the relative error by about x/p, which matters only where e^{−x} has made the
+    function negligible.
+    """
     steps = int(np.ceil(p)) - 1
     start = p - steps
     if start == 1.0:

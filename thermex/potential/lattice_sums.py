@@ -208,29 +208,33 @@ def _direct_response(model: PairModel, particles: Particles, gradient: Array, he
     # displacements: dx = u_j − u_i
     m = particles.size
     force = radial.tension[:, None] * x
-    moves = gradient[6:].reshape(m, 3)
-    np.add.at(moves, bonds.second, 0.5 * force)
-    np.add.at(moves, bonds.first, -0.5 * force)
+    gradient[6:] += (_gathered(bonds.second, force, m) - _gathered(bonds.first, force, m)).ravel() * 0.5
     _add_pairs(hessian, bonds, matrices, m)
     mixed = np.einsum("nea,nab->neb", stretched, matrices) + np.einsum(
         "n,eab,nb->nea", radial.tension, STRAINS, x
     )
-    block = np.zeros((m, 6, 3))
-    np.add.at(block, bonds.second, 0.5 * mixed)
-    np.add.at(block, bonds.first, -0.5 * mixed)
+    block = 0.5 * (_gathered(bonds.second, mixed, m) - _gathered(bonds.first, mixed, m))
     flat = block.transpose(1, 0, 2).reshape(6, 3 * m)
     hessian[:6, 6:] += flat
     hessian[6:, :6] += flat.T
     return float(0.5 * radial.energy.sum())
 
 
+def _gathered(index: NDArray[np.int64], values: Array, size: int) -> Array:
+    """Sum rows of values (nb, …) by index, shape (size, …)."""
+    flat = values.reshape(len(values), -1)
+    columns = [np.bincount(index, flat[:, k], minlength=size) for k in range(flat.shape[1])]
+    return np.stack(columns, axis=-1).reshape(size, *values.shape[1:])
+
+
 def _add_pairs(hessian: Array, bonds: Bonds, matrices: Array, m: int) -> None:
     """Add Σ ½ (u_j − u_i)Φ(u_j − u_i) over ordered pairs to the displacement block."""
-    blocks = np.zeros((m, m, 3, 3))
-    np.add.at(blocks, (bonds.first, bonds.first), 0.5 * matrices)
-    np.add.at(blocks, (bonds.second, bonds.second), 0.5 * matrices)
-    np.add.at(blocks, (bonds.first, bonds.second), -0.5 * matrices)
-    np.add.at(blocks, (bonds.second, bonds.first), -0.5 * matrices)
+    pairs = _gathered(bonds.first * m + bonds.second, matrices, m * m).reshape(m, m, 3, 3)
+    pairs = pairs + pairs.transpose(1, 0, 2, 3)
+    blocks = -0.5 * pairs
+    rows = 0.5 * pairs.sum(axis=1)
+    for i in range(m):
+        blocks[i, i] += rows[i]
     hessian[6:, 6:] += blocks.transpose(0, 2, 1, 3).reshape(3 * m, 3 * m)
 
 

@@ -1,0 +1,132 @@
+"""The vibrating lattice of any crystal under a pair model: cells relaxed one by one."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from itertools import product
+
+import numpy as np
+from numpy.typing import NDArray
+
+from thermex.chebyshev import Box
+from thermex.crystal.crystal import Crystal
+from thermex.free_energy import Slice, Term, temperature_free
+from thermex.lattice import Motion, Supercells
+from thermex.phonons import MassWeighting, direct, interpolate, supercell
+from thermex.potential.model import PairModel
+from thermex.relaxation import Configuration, Freedom, Reduced, relax_inner, strain_derivatives
+
+Array = NDArray[np.float64]
+Complex = NDArray[np.complex128]
+
+
+@dataclass(frozen=True, slots=True)
+class GeneralLattice:
+    """A crystal with free axes or inner coordinates.
+
+    At every strain the inner coordinates follow the static forces (zero static internal stress
+    approximation), and the complete force constants go to phonopy.
+    """
+
+    model: PairModel
+    origin: Configuration
+    """The static minimum, x = 0."""
+    freedom: Freedom
+    supercells: Supercells
+    known: dict[bytes, tuple[Configuration, Reduced]] = field(default_factory=dict, compare=False, repr=False)
+    """Cells already relaxed, by strain."""
+
+    @property
+    def crystal(self) -> Crystal:
+        """The crystal at x = 0."""
+        return self.origin.crystal
+
+    def relaxed(self, x: Array) -> tuple[Configuration, Reduced]:
+        """Return the cell at strain x with inner coordinates relaxed."""
+        key = np.round(x, 12).tobytes()
+        if key not in self.known:
+            start = self.origin.strained(x)
+            self.known[key] = relax_inner(self.model, start, self.freedom)
+        return self.known[key]
+
+    def static_over(self, box: Box) -> Term:
+        """Return U over a box, from its value, slopes and curvatures at the points of the box."""
+        rows = [strain_derivatives(self.relaxed(x)[1]) for x in box.grid]
+        return fitted_energy(box, rows)
+
+    def motion(self, points: Array) -> Motion:
+        """Return the dynamical matrices through phonopy, a supercell at every strain."""
+        weighting = MassWeighting(self.crystal.masses)
+
+        def motion(x: Array) -> Complex:
+            particles = self.relaxed(x)[0].particles(self.model)
+            cell = supercell(particles, self.supercells.short)
+            return weighting.dynamical(interpolate(self.model, particles, cell)(points))
+
+        return motion
+
+    def exact_motion(self, points: Array) -> Motion:
+        """Return the dynamical matrices by direct and Ewald sums."""
+        weighting = MassWeighting(self.crystal.masses)
+
+        def motion(x: Array) -> Complex:
+            particles = self.relaxed(x)[0].particles(self.model)
+            return weighting.dynamical(direct(self.model, particles)(points))
+
+        return motion
+
+
+@dataclass(frozen=True, slots=True)
+class FittedEnergy:
+    """A polynomial in the strains, in Chebyshev form over a box."""
+
+    box: Box
+    coefficients: Array
+    """Shape (1, n1, …, nd)."""
+
+    def at(self, temperature: Array) -> Slice:
+        """Return the energy as a term without entropy."""
+        repeated = np.repeat(self.coefficients, len(temperature), axis=0)
+        return temperature_free(lambda x: self.box.evaluate(repeated, x))
+
+
+def fitted_energy(box: Box, rows: list[tuple[float, Array, Array]]) -> FittedEnergy:
+    """Fit a polynomial to values, slopes and curvatures at the points of a box (least squares).
+
+    Its total degree is the highest for which the data leave twice as many equations as unknowns.
+    """
+    d = len(box.counts)
+    degree = _degree(d, len(rows))
+    wide = Box(box.window, (degree + 1,) * d)
+    exponents = [e for e in product(range(degree + 1), repeat=d) if sum(e) <= degree]
+    width = 0.5 * (box.window[:, 1] - box.window[:, 0])
+    points = box.grid
+    columns = []
+    for e in exponents:
+        one = np.zeros((1, *wide.counts))
+        one[(0, *e)] = 1.0
+        value, slope, curvature = wide.evaluate(np.repeat(one, len(points), axis=0), points)
+        columns.append(_stacked(value, slope * width, curvature * np.outer(width, width), d))
+    value, slope, curvature = (np.array([row[k] for row in rows]) for k in range(3))
+    data = _stacked(value - value.mean(), slope * width, curvature * np.outer(width, width), d)
+    solution, *_ = np.linalg.lstsq(np.array(columns).T, data, rcond=None)
+    coefficients = np.zeros((1, *wide.counts))
+    for e, c in zip(exponents, solution, strict=True):
+        coefficients[(0, *e)] = c
+    coefficients[(0, *([0] * d))] += value.mean()
+    return FittedEnergy(wide, coefficients)
+
+
+def _degree(d: int, points: int) -> int:
+    from math import comb
+
+    equations = points * (1 + d + d * (d + 1) // 2)
+    degree = 2
+    while comb(degree + 1 + d, d) * 2 <= equations and degree < 14:
+        degree += 1
+    return degree
+
+
+def _stacked(value: Array, slope: Array, curvature: Array, d: int) -> Array:
+    upper = [curvature[:, a, b] for a in range(d) for b in range(a, d)]
+    return np.concatenate([value, *slope.T, *upper])
