@@ -19,19 +19,123 @@ from thermex.anharmonic.correlation import (
     periodic_crystal,
     susceptibility,
 )
+from thermex.anharmonic.term import AnharmonicTerm, term_through
 from thermex.anharmonic.vertices import BareBonds, bare_bonds, cubic_tensors, quartic_mean, radial_factors
+from thermex.chebyshev import Box, without_highest
 from thermex.crystal.crystal import Crystal
+from thermex.errors import UnstableCrystalError
+from thermex.potential.bonds import find_bonds
 from thermex.potential.model import PairModel
+from thermex.potential.terms import Spline, Tapered
 
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
+
+#: Γ-centred meshes (divisions along each primitive axis). F₂ converges as 1/N³ on them: the last two
+#: give the extrapolated value, the first two the one it is compared with.
+MESHES = (4, 6, 8)
+
+#: Bonds with a vertex, in nearest-neighbour distances, and the shorter range for the error.
+REACH, SHORT_REACH = 6.05, 4.05
+
+#: Share of the difference between the two extrapolations that is stated as error of the finer one.
+MESH_SHARE = 0.3
+
+#: Volumes at which F₂ is computed.
+VOLUMES = 9
+
+
+@dataclass(frozen=True, slots=True)
+class LeadingOrder:
+    """F₂ over a window of volumes, with companions from which its error is found."""
+
+    best: AnharmonicTerm
+    coarse_mesh: AnharmonicTerm
+    """Moved by the error of the mesh."""
+    shorter_range: AnharmonicTerm
+    """Moved by what the bonds between the two ranges give."""
+    fewer_volumes: AnharmonicTerm
+    """Without the highest coefficients."""
+
+    @property
+    def companions(self) -> tuple[AnharmonicTerm, AnharmonicTerm, AnharmonicTerm]:
+        """Terms that differ from the best one by about one source of error each."""
+        return self.coarse_mesh, self.shorter_range, self.fewer_volumes
+
+
+def applicable(crystal: Crystal, model: PairModel) -> str | None:
+    """Return why the leading order is not offered for a crystal, or None when it is."""
+    if len(crystal.axes) != 1:
+        return "the anharmonic correction was tested on cubic crystals only; this one has free axes"
+    if len(crystal.displacements):
+        return "the anharmonic correction was not tested on crystals with free inner coordinates"
+    if model.has_shells:
+        return "the anharmonic correction was not tested on polarisable ions"
+    if any(isinstance(link.term, Tapered) for link in model.interactions):
+        return "the anharmonic correction needs fourth derivatives, which a potential with a cutoff lacks"
+    if any(isinstance(link.term, Spline) for link in model.interactions):
+        return "the anharmonic correction needs fourth derivatives, which a table does not give"
+    return None
+
+
+def leading_order(model: PairModel, crystal: Crystal, window: Array) -> LeadingOrder:
+    """Compute F₂ over a window of volumes.
+
+    Parameters
+    ----------
+    crystal
+        Cubic, at x = 0.
+    window
+        Shape (1, 2): range of x = ln(lattice parameter / that of ``crystal``).
+
+    Raises
+    ------
+    UnstableCrystalError
+        Phonons are imaginary somewhere in the window.
+    """
+    nearest = nearest_bond(crystal)
+    far = bare_bonds(model, model.particles(crystal), REACH * nearest)
+    near = far.within(SHORT_REACH * nearest)
+    box = Box(np.asarray(window, dtype=float), (VOLUMES,))
+    meshes = [periodic_crystal(model, crystal, (n, n, n)) for n in MESHES]
+    x = box.grid[:, 0]
+    rows = np.array([[sum(leading_parts(mesh, far, float(v))) for v in x] for mesh in meshes])
+    short = np.array([sum(leading_parts(meshes[1], near, float(v))) for v in x])
+    fine = extrapolated(rows[1], rows[2], MESHES[1], MESHES[2])
+    rough = extrapolated(rows[0], rows[1], MESHES[0], MESHES[1])
+    best = term_through(box, fine)
+    return LeadingOrder(
+        best,
+        term_through(box, fine + MESH_SHARE * (rough - fine)),
+        term_through(box, fine + short - rows[1]),
+        AnharmonicTerm(box, without_highest(best.coefficients[None, :])[0]),
+    )
+
+
+def extrapolated(coarse: Array, fine: Array, coarse_n: int, fine_n: int) -> Array:
+    """Return the limit of values that converge as 1/N³, from two meshes."""
+    a, b = float(coarse_n) ** 3, float(fine_n) ** 3
+    return np.asarray((b * fine - a * coarse) / (b - a))
+
+
+def nearest_bond(crystal: Crystal) -> float:
+    """Return the distance of nearest neighbours, Å."""
+    reach = 1.01 * float(np.linalg.norm(crystal.lattice, axis=1).min())
+    return float(find_bonds(crystal.lattice, crystal.cartesian, reach).length.min())
 
 
 def leading_parts(periodic: PeriodicCrystal, bare: BareBonds, x: float) -> tuple[float, float]:
     """Return the cubic and the quartic part of F₂ at ln(scale) = x, 1/eV per primitive cell."""
     scale = float(np.exp(x))
     size, repeat = periodic.crystal.size, periodic.repeat
-    response = susceptibility(periodic.force_constants(x))
+    try:
+        response = susceptibility(periodic.force_constants(x))
+    except np.linalg.LinAlgError as error:
+        raise UnstableCrystalError(
+            f"phonons are imaginary at {100.0 * (scale - 1.0):+.2f} % in the lattice parameter",
+            where="anharmonic correction",
+            fix="it needs a stable harmonic crystal at every volume on the way",
+        ) from error
     spread = inverse_fourier(response.transpose(3, 4, 0, 1, 2)).reshape(size, 3, size, 3, *repeat)
     vector, length = bare.bonds.vector * scale, bare.bonds.length * scale
     _, g2, g3, g4 = radial_factors(bare.radial(scale, 4), length)

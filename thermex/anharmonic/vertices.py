@@ -13,10 +13,10 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from thermex.constants import COULOMB
 from thermex.potential.bonds import Bonds, find_bonds
 from thermex.potential.model import PairModel, Particles
 from thermex.potential.terms import InversePower, Term, sum_of
-from thermex.constants import COULOMB
 
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
