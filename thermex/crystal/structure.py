@@ -164,20 +164,28 @@ def _refuse_partial(atoms: Any, name: str) -> None:
 
 
 def _without_repeats(atoms: Any, name: str) -> Any:
-    """Drop atoms written twice for want of digits; refuse others that overlap."""
+    """Put atoms written several times for want of digits at their mean; refuse others that overlap."""
     from ase import neighborlist
 
     search: Any = neighborlist.neighbor_list
-    first, second, distance = search("ijd", atoms, OVERLAP)
-    for i, j, d in zip(first, second, distance, strict=True):
-        if d > MERGED or i == j or atoms.numbers[i] != atoms.numbers[j]:
-            raise InputError(
-                f"{atoms.symbols[i]} and {atoms.symbols[j]} overlap, {d:.3f} Å apart",
-                where=name,
-                fix="check the positions and the space group",
-            )
-    repeated = {int(max(i, j)) for i, j in zip(first, second, strict=True)}
-    return atoms[[i for i in range(len(atoms)) if i not in repeated]]
+    first, second, distance, vector = search("ijdD", atoms, OVERLAP)
+    if not len(first):
+        return atoms
+    numbers = atoms.numbers
+    wrong = (distance > MERGED) | (first == second) | (numbers[first] != numbers[second])
+    if wrong.any():
+        k = int(np.argmax(wrong))
+        raise InputError(
+            f"{atoms.symbols[first[k]]} and {atoms.symbols[second[k]]} overlap, {distance[k]:.3f} Å apart",
+            where=name,
+            fix="check the positions and the space group",
+        )
+    whole = atoms.copy()
+    shift = np.zeros((len(atoms), 3))
+    np.add.at(shift, first, vector)
+    whole.positions += shift / (1.0 + np.bincount(first, minlength=len(atoms)))[:, None]
+    repeated = set(np.maximum(first, second).tolist())
+    return whole[[i for i in range(len(atoms)) if i not in repeated]]
 
 
 def _masses(atoms: Any, name: str) -> dict[str, float]:

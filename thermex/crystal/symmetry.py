@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import warnings
 from collections.abc import Sequence
 from dataclasses import replace
 from functools import lru_cache
@@ -92,8 +93,7 @@ def tabulated_operations(hall: int, centring: str) -> tuple[Ints, Array]:
     """
     import spglib
 
-    ask: Any = spglib.get_symmetry_from_database
-    table = ask(hall)
+    table = _quietly(spglib.get_symmetry_from_database, hall)
     primitive = primitive_vectors(centring)
     change = np.linalg.inv(primitive).T
     rotations = np.rint(change @ table["rotations"] @ primitive.T).astype(np.int64)
@@ -330,15 +330,21 @@ def symmetry_dataset(cell: tuple[Array, Array, list[int]], name: str, tolerance:
     """
     import spglib
 
-    ask: Any = spglib.get_symmetry_dataset
     try:
         finite = np.isfinite(cell[0]).all() and np.isfinite(cell[1]).all()
-        data = ask(cell, symprec=tolerance) if finite else None
+        data = _quietly(spglib.get_symmetry_dataset, cell, tolerance) if finite else None
     except Exception as error:  # spglib has a dozen reasons; all mean the same here
         raise _no_symmetry(name) from error
     if data is None:
         raise _no_symmetry(name)
     return data
+
+
+def _quietly(function: Any, *arguments: object) -> Any:
+    """Call spglib, which announces the end of its old way with errors at every call."""
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore", DeprecationWarning)
+        return function(*arguments)
 
 
 def _no_symmetry(name: str) -> InputError:
