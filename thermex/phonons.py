@@ -88,7 +88,7 @@ def supercell(particles: Particles, repeat: tuple[int, int, int]) -> Supercell:
     phonopy = Phonopy(cell, supercell_matrix=np.diag(repeat), primitive_matrix="P", is_symmetry=False)
     big = phonopy.supercell
     owner = np.array([big.u2u_map[k] for k in big.s2u_map])
-    cells = big.scaled_positions * np.array(repeat) - phonopy.primitive.scaled_positions[owner]
+    cells = big.scaled_positions * np.array(repeat) - phonopy.unitcell.scaled_positions[owner]
     index = np.rint(cells).astype(int) % np.array(repeat)
     return Supercell(phonopy, particles.lattice, repeat, owner, index, shift)
 
