@@ -299,3 +299,26 @@ def test_unusable_series_are_never_chosen() -> None:
     assert best.value != pytest.approx(10.1e-6, abs=1e-9)
     assert best_measured(load_material("Kr"), LINEAR, 5.0) is None
     assert best_measured(load_material("Zn"), K_S, 298.0) is None
+
+
+@pytest.mark.parametrize(
+    ("formula", "source", "temperature", "relative", "estimated"),
+    [
+        ("NaCl", "White G.K., Proc", 20.0, 0.05, True),  # "1-2% at 65 and 283 K; 3-5% at 20 K (est.)"
+        ("NaCl", "White G.K., Proc", 283.0, 0.02, True),
+        ("Na", "CRC Handbook (25 C", 298.0, 0.03, False),  # "1-2% (Na, K: 3%)"
+        ("Al", "CRC Handbook (25 C", 298.0, 0.02, False),
+        ("Cu", "NIST cryogenic", 20.0, 0.10, False),  # "10% <50 K, 5% above"
+        ("Cu", "NIST cryogenic", 293.0, 0.05, False),
+        ("MgO", "Anderson O.L.", 300.0, 0.03, True),  # "2-3% (est.)"
+        ("Cu", "Wang K., Reeber", 1200.0, 0.03, True),  # "1% (est.); 3% above 1100 K"
+    ],
+)
+def test_uncertainties_keep_the_larger_figure(
+    formula: str, source: str, temperature: float, relative: float, estimated: bool
+) -> None:
+    series = next(s for s in load_material(formula).of(LINEAR) if s.source.startswith(source))
+    found = value_at(series, temperature)
+    assert found is not None
+    assert found[1] == pytest.approx(relative * found[0], rel=1e-6)
+    assert series.estimated_uncertainty == estimated
