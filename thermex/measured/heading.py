@@ -9,7 +9,15 @@ from dataclasses import dataclass
 from thermex.errors import Fault
 from thermex.measured.blocks import Block, number, shown
 from thermex.measured.conventions import ZERO_CELSIUS_K
-from thermex.measured.quantities import LATTICE, QUANTITIES, Quantity, factor_of, plain_word, quantity_named
+from thermex.measured.quantities import (
+    LATTICE,
+    LINEAR,
+    QUANTITIES,
+    Quantity,
+    factor_of,
+    plain_word,
+    quantity_named,
+)
 
 _KELVIN = {"k", "kelvin"}
 _CELSIUS = {"c", "°c", "degc", "celsius", "℃", "degree celsius", "degrees celsius"}
@@ -62,6 +70,7 @@ def heading_of(block: Block, file: str, faults: list[Fault]) -> Heading | None:
     choices = {key: _choice(block, key, faults) for key in _CHOICES}
     how = _how(block, faults)
     if quantity is None:
+        _kind(block, LINEAR if _text(block, "kind") else LATTICE, faults)
         return None
     kind = _kind(block, quantity, faults)
     axis = _axis(block, quantity, faults)
