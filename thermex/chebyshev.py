@@ -82,10 +82,10 @@ def _contract(coefficients: Array, factors: list[Array]) -> Array:
 
 
 def without_highest(coefficients: Array) -> Array:
-    """Return coefficients with the two highest orders along every axis set to zero (error estimates)."""
+    """Return coefficients without the two highest orders along every axis (one where there are few)."""
     out = coefficients.copy()
     for axis in range(1, out.ndim):
         index = [slice(None)] * out.ndim
-        index[axis] = slice(-2, None)
+        index[axis] = slice(-2 if out.shape[axis] >= 7 else -1, None)
         out[tuple(index)] = 0.0
     return out

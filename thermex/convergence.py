@@ -153,14 +153,16 @@ class _Difference:
         return evaluate
 
 
-def supercell_error(lattice: Lattice, solution: Solution, load: Load) -> Array:
+def supercell_error(
+    lattice: Lattice, solution: Solution, load: Load, divisions: int = 6, points: int = 5
+) -> Array:
     """Return the relative error of α by interpolation between commensurate q, shape (nT,).
 
     Phonons on one small mesh are computed twice, with phonopy's Φ(q) and with the direct lattice
     sums; the difference of the two free energies is added to the surface and α solved again.
     """
-    box = Box(solution.surface.box.window, tuple(min(n, 5) for n in solution.surface.box.counts))
-    mesh = graded(lattice.crystal, divisions_for(lattice.crystal, 6))
+    box = Box(solution.surface.box.window, tuple(min(n, points) for n in solution.surface.box.counts))
+    mesh = graded(lattice.crystal, divisions_for(lattice.crystal, divisions))
     found = [
         np.maximum(frequencies_over(motion, box, mesh), 1e-9)
         for motion in (lattice.exact_motion(mesh.points), lattice.motion(mesh.points))

@@ -2,30 +2,32 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
-from time import perf_counter
 
 import numpy as np
 from numpy.typing import NDArray
 
-from thermex import elastic, equation_of_state, modes, oscillators
+from thermex import modes, oscillators
+from thermex.anharmonic.method import Method, method_error
 from thermex.case.case import Case
 from thermex.chebyshev import Box
 from thermex.constants import BOLTZMANN, J_PER_MOL_EV
 from thermex.crystal.build import build_crystal
 from thermex.crystal.crystal import Crystal
-from thermex.equilibrium import load_on
 from thermex.errors import InputError
 from thermex.free_energy import Vibrations
-from thermex.lattice import supercells_for, uniform_lattice
+from thermex.ground import Ground, fixed_ground, relaxed_ground
 from thermex.mesh import Mesh, divisions_for, graded, long_wave_sphere
 from thermex.potential.bonds import find_bonds
-from thermex.potential.build import nearest_distance, pair_model
-from thermex.potential.lattice_sums import lattice_response
+from thermex.potential.build import pair_model
 from thermex.potential.model import PairModel
-from thermex.prediction import Effort, EquationOfState, ModeSample, NumericalError, Prediction, StaticLattice
-from thermex.road import Progress, Travelled, travel
-from thermex.static import ScaledEnergy, bulk_modulus, find_minimum, scaled_energy, turning_points
+from thermex.prediction import Effort, ModeSample, NumericalError, Prediction, StaticLattice
+from thermex.relaxation import freedom_of
+from thermex.road import Progress, Travelled
+from thermex.static import turning_points
+from thermex.stopwatch import Stopwatch
+from thermex.volume_path import path_alpha
 from thermex.zone_centre import zone_centre
 
 Array = NDArray[np.float64]
@@ -52,58 +54,28 @@ def predict(case: Case, *, progress: Progress = _silent) -> Prediction:
     NoAnswerError
         No static minimum, an unstable crystal, or no temperature below the branch end.
     """
-    started = perf_counter()
+    watch = Stopwatch()
     crystal = build_crystal(case.crystal)
     model = pair_model(case.potential, crystal)
     refuse_collapsed(model, crystal, case.source)
-    energy = static_energy(model, crystal, case)
-    static = static_lattice(model, energy, case.conditions.pressure)
-    seconds = {"static lattice": perf_counter() - started}
+    freedom = freedom_of(model, crystal)
     asked = np.array(case.conditions.temperatures, dtype=float)
-    reference = case.conditions.reference_temperature
-    grid = np.unique(np.concatenate([asked, [reference, 0.0]]))
-    started = perf_counter()
-    load = load_on(energy.crystal, case.conditions.pressure)
-    travelled = travel(
-        lambda span: uniform_lattice(model, energy, supercells_for(energy.crystal, span)),
-        load,
-        grid,
-        case.accuracy.alpha,
-        progress,
-    )
-    seconds["phonons and equilibrium"] = perf_counter() - started
-    started = perf_counter()
+    grid = np.unique(np.concatenate([asked, [case.conditions.reference_temperature, 0.0]]))
+    if len(crystal.axes) == 1 and len(freedom.inner) == 0:
+        ground = fixed_ground(case, model, crystal)
+    else:
+        ground = relaxed_ground(case, model, crystal, freedom)
+    watch.lap("static lattice")
+    travelled = ground.travel(grid, case.accuracy.alpha, progress)
+    watch.lap("phonons and equilibrium")
     sampled = sample_modes(travelled)
-    seconds["modes"] = perf_counter() - started
-    return assemble(case, model, static, travelled, sampled, grid, seconds, _fits(energy, static))
-
-
-def static_energy(model: PairModel, crystal: Crystal, case: Case) -> ScaledEnergy:
-    """Return U(x) of a cubic crystal with its static minimum under pressure as the origin."""
-    if len(crystal.axes) != 1 or len(crystal.displacements):
-        raise InputError("only cubic crystals with fixed sites", where="crystal")
-    rough = scaled_energy(model, crystal)
-    x = find_minimum(rough, case.conditions.pressure, case.source)
-    return scaled_energy(model, crystal.strained(np.array([x])))
-
-
-def static_lattice(model: PairModel, energy: ScaledEnergy, pressure: float) -> StaticLattice:
-    """Describe the crystal at rest, and refuse one that is elastically unstable."""
-    crystal = energy.crystal
-    response = lattice_response(model, model.particles(crystal))
-    stiff = elastic.stiffness(response, crystal.volume, pressure)
-    modulus, slope = bulk_modulus(energy, pressure)
-    elastic.refuse_soft(stiff, "at the static lattice")
-    return StaticLattice(
-        crystal=crystal,
-        energy_eV=float(energy.derivatives(np.zeros(1), 0)[0, 0]),
-        bulk_modulus_GPa=modulus,
-        bulk_modulus_derivative=slope,
-        elastic_GPa=stiff,
-        lowest_elastic_eigenvalue_GPa=elastic.lowest_eigenvalue(stiff),
-        nearest_distance_A=nearest_distance(crystal),
-        turning_points_A=turning_points(model),
+    watch.lap("modes")
+    effective = effective_temperature(travelled)
+    method = method_error(
+        case.accuracy, model, travelled, asked, effective, sampled.debye_moment_K, progress
     )
+    watch.lap("anharmonic correction")
+    return assemble(case, model, ground, travelled, sampled, method, grid, watch.seconds)
 
 
 def refuse_collapsed(model: PairModel, crystal: Crystal, where: str) -> None:
@@ -123,52 +95,66 @@ def refuse_collapsed(model: PairModel, crystal: Crystal, where: str) -> None:
             )
 
 
-def _fits(energy: ScaledEnergy, static: StaticLattice) -> tuple[EquationOfState, ...]:
-    x = np.linspace(-0.02, 0.02, 21)
-    volume = energy.crystal.volume * np.exp(3.0 * x)
-    values = energy.derivatives(x, 0)[0]
-    if static.bulk_modulus_derivative <= 1.0:
-        return ()
-    return equation_of_state.fit(volume, values, static.bulk_modulus_GPa, static.bulk_modulus_derivative)
-
-
 @dataclass(frozen=True, slots=True)
 class SampledModes:
-    """Modes on a small mesh over the strains of the branch, and the long-wave limit at T = 0."""
+    """Modes on a small mesh at a few cells along the branch, and the long-wave limit at T = 0."""
 
     mesh: Mesh
     box: Box
+    """Points in ln V along the branch."""
     cells: list[modes.CellModes]
     limit: modes.LongWaveLimit
+
+    @property
+    def debye_moment_K(self) -> float:
+        """θ_D from the second moment of the frequencies of the coldest cell."""
+        return oscillators.debye_temperature_of_moment(self.cells[0].frequencies, self.mesh.weights)
 
 
 def sample_modes(travelled: Travelled) -> SampledModes:
     """Compute modes with their γ and amplitudes at a few cells along the branch."""
     lattice, states = travelled.lattice, travelled.solution.states
-    mesh = graded(lattice.crystal, divisions_for(lattice.crystal, 8))
-    sphere = long_wave_sphere(lattice.crystal)
-    motion = lattice.motion(np.concatenate([mesh.points, sphere.points]))
-    size = len(mesh.points)
-    window = travelled.solution.surface.box.window
-    box = Box(window, (4,) * len(window))
-    direction = np.full(len(window), 1.0 / travelled.load.trace.sum())
-    warm = [modes.cell_modes(lambda x: motion(x)[:size], mesh, x, direction) for x in box.grid]
-    cold = modes.cell_modes(lambda x: motion(x)[size:], sphere, states.x[0], direction)
+    crystal = lattice.crystal
+    mesh = graded(crystal, divisions_for(crystal, 8 if crystal.size < 8 else 4))
+    sphere = long_wave_sphere(crystal, 24 if crystal.size < 8 else 10)
+    motion, slow = lattice.motion(mesh.points), lattice.motion(sphere.points)
+    log_volume = states.x @ travelled.load.trace
+    low, high = float(log_volume.min()), float(log_volume.max())
+    margin = 0.05 * (high - low) + 1e-5
+    box = Box(np.array([[low - margin, high + margin]]), (4 if crystal.size < 8 else 2,))
+    direction = squeeze(travelled)
+    order = np.argsort(log_volume)
+    warm = []
+    for point in box.grid[:, 0]:
+        x = np.array([np.interp(point, log_volume[order], column[order]) for column in states.x.T])
+        warm.append(modes.cell_modes(motion, mesh, x, direction))
+    cold = modes.cell_modes(slow, sphere, states.x[0], direction)
     volume = float(travelled.load.volume(states.x[:1])[0])
     return SampledModes(mesh, box, warm, modes.long_wave_limit(cold, sphere, volume))
+
+
+def squeeze(travelled: Travelled) -> Array:
+    """Return the change of x for a unit change of ln V under hydrostatic pressure, shape (d,)."""
+    states, load = travelled.solution.states, travelled.load
+    x = states.x[:1]
+    values = travelled.solution.surface.best.at(states.temperature[:1])(x)
+    _, curvature = load.enthalpic(values, x)
+    response = np.linalg.solve(curvature[0], load.trace)
+    return np.asarray(response / (load.trace @ response))
 
 
 def assemble(
     case: Case,
     model: PairModel,
-    static: StaticLattice,
+    ground: Ground,
     travelled: Travelled,
     sampled: SampledModes,
+    method: Method,
     grid: Array,
-    seconds: dict[str, float],
-    fits: tuple[EquationOfState, ...],
+    seconds: Mapping[str, float],
 ) -> Prediction:
     """Gather everything into a :class:`Prediction` at the temperatures that the case asks for."""
+    static = ground.static
     asked = np.array(case.conditions.temperatures, dtype=float)
     states = travelled.solution.states
     rows = np.searchsorted(grid, asked)
@@ -186,12 +172,17 @@ def assemble(
     names = crystal.axis_names
     lattice = np.exp(states.x) * crystal.lattice_parameters
     averages = modes.averages(
-        sampled.cells, sampled.box, sampled.mesh, crystal.masses, states.x, states.temperature
+        sampled.cells,
+        sampled.box,
+        sampled.mesh,
+        crystal.masses,
+        (states.x @ travelled.load.trace)[:, None],
+        states.temperature,
     )
     gamma, gamma_modes, debye = _cold_limits(travelled, sampled, averages.gruneisen)
-    effective = _effective_temperature(travelled)
+    effective = effective_temperature(travelled)
     conventions = _conventions(case, travelled, lattice, grid)
-    centre = zone_centre(model, model.particles(crystal), crystal.masses)
+    centre = zone_centre(model, ground.configuration.particles(model), crystal.masses)
     return Prediction(
         case=case,
         crystal=crystal,
@@ -213,9 +204,7 @@ def assemble(
         entropy_J_per_mol_K=spread(states.entropy) * per_mole,
         free_energy_eV=spread(states.energy),
         debye_temperature_K=spread(debye),
-        debye_moment_K=oscillators.debye_temperature_of_moment(
-            sampled.cells[0].frequencies, sampled.mesh.weights
-        ),
+        debye_moment_K=sampled.debye_moment_K,
         mean_square_displacement_A2=spread(averages.square_displacement),
         effective_temperature_K=spread(effective),
         reference_temperature_K=case.conditions.reference_temperature,
@@ -228,14 +217,14 @@ def assemble(
         branch_ends=travelled.ends,
         branch_end_lattice_A=_end_lattice(travelled, crystal),
         zero_point_lattice_A=dict(zip(names, map(float, lattice[0]), strict=True)),
-        equations_of_state=fits,
+        equations_of_state=ground.fits,
         effort=_effort(travelled, seconds),
         modes=_mode_samples(travelled, sampled),
         zone_centre=centre,
-        path_alpha_volume_per_K=None,
-        rule=None,
-        anharmonic=None,
-        notes=_notes(case, model, static, travelled),
+        path_alpha_volume_per_K=spread(path_alpha(travelled)) if len(names) > 1 else None,
+        rule=method.rule,
+        anharmonic=method.anharmonic,
+        notes=(*_notes(case, model, static, travelled), *method.notes),
     )
 
 
@@ -258,7 +247,7 @@ def _cold_limits(
     return gamma, averaged, debye
 
 
-def _effective_temperature(travelled: Travelled) -> Array:
+def effective_temperature(travelled: Travelled) -> Array:
     """Return T_eff = E_vib/(3n k_B) at every state."""
     states = travelled.solution.states
     vibrations = next(t for t in travelled.solution.surface.best.terms if isinstance(t, Vibrations))
@@ -292,7 +281,7 @@ def _end_lattice(travelled: Travelled, crystal: Crystal) -> dict[str, float]:
     return dict(zip(crystal.axis_names, map(float, lengths), strict=True))
 
 
-def _effort(travelled: Travelled, seconds: dict[str, float]) -> Effort:
+def _effort(travelled: Travelled, seconds: Mapping[str, float]) -> Effort:
     surface = travelled.solution.surface
     cells = travelled.supercells
     return Effort(
@@ -310,8 +299,8 @@ def _mode_samples(travelled: Travelled, sampled: SampledModes) -> tuple[ModeSamp
     states = travelled.solution.states
     out = []
     for label, row in (("cold", 0), ("hot", len(states.temperature) - 1)):
-        nearest = int(np.argmin(np.abs(sampled.box.grid - states.x[row]).sum(axis=1)))
-        cell = sampled.cells[nearest]
+        log_volume = float(states.x[row] @ travelled.load.trace)
+        cell = sampled.cells[int(np.argmin(np.abs(sampled.box.grid[:, 0] - log_volume)))]
         kelvin = float(states.temperature[row])
         out.append(ModeSample(label, kelvin, sampled.mesh.weights, cell.frequencies, cell.gruneisen))
     return tuple(out)
@@ -323,10 +312,6 @@ def _notes(case: Case, model: PairModel, static: StaticLattice, travelled: Trave
         notes.append(f"{pair}: the potential turns over towards collapse inside {distance:.3f} Å.")
     if travelled.ends:
         top = max(case.conditions.temperatures)
-        if top > travelled.end_K:
-            notes.append(
-                f"Temperatures above {travelled.end_K:.0f} K are left empty: {travelled.reason}."
-            )
         if top > 0.9 * travelled.end_K:
             notes.append(
                 f"Within 10 % of the branch end (above {0.9 * travelled.end_K:.0f} K) α runs away by nature of "
@@ -335,5 +320,9 @@ def _notes(case: Case, model: PairModel, static: StaticLattice, travelled: Trave
     if case.conditions.reference_temperature > travelled.end_K and travelled.ends:
         notes.append(
             "The reference temperature lies past the branch end: ΔL/L₀ and mean coefficients are empty."
+        )
+    if len(static.crystal.displacements):
+        notes.append(
+            "Inner coordinates follow the static forces at every cell (zero static internal stress approximation)."
         )
     return tuple(notes)

@@ -14,7 +14,15 @@ from thermex.free_energy import Slice, Term, temperature_free
 from thermex.lattice import Motion, Supercells
 from thermex.phonons import MassWeighting, direct, interpolate, supercell
 from thermex.potential.model import PairModel
-from thermex.relaxation import Configuration, Freedom, Reduced, relax_inner, strain_derivatives
+from thermex.relaxation import (
+    Configuration,
+    Freedom,
+    Reduced,
+    inner_response,
+    moved,
+    relax_inner,
+    strain_derivatives,
+)
 
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
@@ -33,6 +41,8 @@ class GeneralLattice:
     """The static minimum, x = 0."""
     freedom: Freedom
     supercells: Supercells
+    inner_slope: Array
+    """Shape (k + s, d), Å: first-order response of the inner variables to a strain."""
     known: dict[bytes, tuple[Configuration, Reduced]] = field(default_factory=dict, compare=False, repr=False)
     """Cells already relaxed, by strain."""
 
@@ -46,6 +56,8 @@ class GeneralLattice:
         key = np.round(x, 12).tobytes()
         if key not in self.known:
             start = self.origin.strained(x)
+            if self.inner_slope.size:
+                start = moved(start, self.freedom, self.inner_slope @ x)
             self.known[key] = relax_inner(self.model, start, self.freedom)
         return self.known[key]
 
@@ -74,6 +86,13 @@ class GeneralLattice:
             return weighting.dynamical(direct(self.model, particles)(points))
 
         return motion
+
+
+def general_lattice(
+    model: PairModel, origin: Configuration, point: Reduced, freedom: Freedom, supercells: Supercells
+) -> GeneralLattice:
+    """Build the lattice of a crystal from its static minimum."""
+    return GeneralLattice(model, origin, freedom, supercells, inner_response(point))
 
 
 @dataclass(frozen=True, slots=True)

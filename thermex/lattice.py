@@ -73,15 +73,15 @@ def supercells_for(crystal: Crystal, span: float) -> Supercells:
     """
     spacing = (crystal.volume / crystal.size) ** (1.0 / 3.0)
     heights = 1.0 / np.linalg.norm(np.linalg.inv(crystal.lattice), axis=0)
-    short = _even(span * spacing / heights, crystal.size)
-    return Supercells(short, _even(1.5 * span * spacing / heights, crystal.size))
+    short = _counts(span * spacing / heights, crystal.size)
+    return Supercells(short, _counts(1.5 * span * spacing / heights, crystal.size))
 
 
-def _even(values: Array, size: int) -> tuple[int, int, int]:
-    """Round up to even counts, then shrink the largest until the supercell is small enough."""
-    counts = np.maximum(2 * np.ceil(np.round(values, 6) / 2.0), 2).astype(int)
+def _counts(values: Array, size: int) -> tuple[int, int, int]:
+    """Round up to whole counts, then shrink the largest until the supercell is small enough."""
+    counts = np.maximum(np.ceil(np.round(values, 6)), 2).astype(int)
     while np.prod(counts) * size > MOST and counts.max() > 2:
-        counts[counts == counts.max()] -= 2
+        counts[counts == counts.max()] -= 1
     return (int(counts[0]), int(counts[1]), int(counts[2]))
 
 

@@ -108,15 +108,16 @@ def _with_long_wave(crystal: Crystal, divisions: tuple[int, int, int], points: A
     return Mesh(divisions, points * stretch[:, None], weights, 1.0 / stretch)
 
 
-def long_wave_sphere(crystal: Crystal) -> Mesh:
+def long_wave_sphere(crystal: Crystal, order: int = 24) -> Mesh:
     """Return directions over half a sphere at the long-wave radius, weights for the mean over the sphere.
 
-    Gauss–Legendre in cos θ times equal steps in φ; ``shrink`` is 1.
+    Gauss–Legendre of the given order in cos θ times equal steps in φ; ``shrink`` is 1.
     """
-    cosines, weights = np.polynomial.legendre.leggauss(24)
+    cosines, weights = np.polynomial.legendre.leggauss(order)
     upper = cosines > 0.0
     cosines, weights = cosines[upper], weights[upper]
-    angles = 2.0 * np.pi * (np.arange(32) + 0.5) / 32
+    steps = 4 * order // 3
+    angles = 2.0 * np.pi * (np.arange(steps) + 0.5) / steps
     sines = np.sqrt(1.0 - cosines**2)
     x = sines[:, None] * np.cos(angles)
     y = sines[:, None] * np.sin(angles)

@@ -58,7 +58,9 @@ class Freedom:
         """Shape (k + s, 3m): displacement of every particle for each inner variable."""
         with_shells = np.concatenate([self.cores, self.cores[:, self.owners]], axis=1)
         alone = np.concatenate([np.zeros((len(self.shells), self.cores.shape[1], 3)), self.shells], axis=1)
-        return np.concatenate([with_shells, alone]).reshape(len(self.cores) + len(self.shells), -1)
+        return np.concatenate([with_shells, alone]).reshape(
+            len(self.cores) + len(self.shells), 3 * (self.cores.shape[1] + len(self.owners))
+        )
 
 
 def freedom_of(model: PairModel, crystal: Crystal) -> Freedom:
@@ -74,7 +76,7 @@ def freedom_of(model: PairModel, crystal: Crystal) -> Freedom:
         fields = invariant_fields(
             crystal.lattice, crystal.fractional, crystal.rotations, crystal.translations
         )
-        flat = fields[:, owners].reshape(len(fields), -1)
+        flat = fields[:, owners].reshape(len(fields), 3 * len(owners))
         if len(flat):
             _, sizes, rows = np.linalg.svd(flat, full_matrices=False)
             shells = rows[sizes > 1e-6].reshape(-1, len(owners), 3)
@@ -175,6 +177,12 @@ def strain_derivatives(point: Reduced) -> tuple[float, Array, Array]:
         coupling = point.hessian[:d, d:]
         hessian = hessian - coupling @ np.linalg.solve(point.hessian[d:, d:], coupling.T)
     return point.response.energy, point.gradient[:d], hessian
+
+
+def inner_response(point: Reduced) -> Array:
+    """Return d(inner variables)/dx at constant static inner forces, shape (k + s, d), Å."""
+    d = point.strains
+    return np.asarray(-np.linalg.solve(point.hessian[d:, d:], point.hessian[d:, :d]))
 
 
 def start_configuration(model: PairModel, crystal: Crystal) -> Configuration:

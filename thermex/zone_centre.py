@@ -10,6 +10,7 @@ from thermex.constants import COULOMB
 from thermex.errors import PolarisationError
 from thermex.phonons import MassWeighting
 from thermex.potential.dynamical import force_constants_at
+from thermex.potential.lattice_sums import Response
 from thermex.potential.model import PairModel, Particles
 from thermex.prediction import ZoneCentre
 
@@ -70,6 +71,14 @@ def refuse_runaway(model: PairModel, particles: Particles, inner: Array) -> None
         where=f"potential.polarisable.{symbol}",
         fix="raise spring_constant or lower shell_charge",
     )
+
+
+def refuse_runaway_shells(model: PairModel, particles: Particles, response: Response) -> None:
+    """Raise :class:`PolarisationError` when the shells of a static lattice have no stable place."""
+    cores = sum(not model.kinds[int(k)].is_shell for k in particles.kind)
+    if cores < particles.size:
+        start = 6 + 3 * cores
+        refuse_runaway(model, particles, response.hessian[start:, start:])
 
 
 def _settled(frequencies: Array) -> Array:

@@ -66,15 +66,15 @@ class LeadingOrder:
 def applicable(crystal: Crystal, model: PairModel) -> str | None:
     """Return why the leading order is not offered for a crystal, or None when it is."""
     if len(crystal.axes) != 1:
-        return "the anharmonic correction was tested on cubic crystals only; this one has free axes"
+        return "it was tested on cubic crystals only"
     if len(crystal.displacements):
-        return "the anharmonic correction was not tested on crystals with free inner coordinates"
+        return "it was not tested on crystals with free inner coordinates"
     if model.has_shells:
-        return "the anharmonic correction was not tested on polarisable ions"
+        return "it was not tested on polarisable ions"
     if any(isinstance(link.term, Tapered) for link in model.interactions):
-        return "the anharmonic correction needs fourth derivatives, which a potential with a cutoff lacks"
+        return "it needs fourth derivatives, which a potential with a cutoff lacks"
     if any(isinstance(link.term, Spline) for link in model.interactions):
-        return "the anharmonic correction needs fourth derivatives, which a table does not give"
+        return "it needs fourth derivatives, which a table does not give"
     return None
 
 

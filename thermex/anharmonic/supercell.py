@@ -1,4 +1,4 @@
-"""The conventional cell of a cubic crystal, and how many of them a periodic supercell should hold."""
+"""The conventional cell of a cubic crystal and the bonds of a supercell made of it."""
 
 from __future__ import annotations
 
@@ -7,7 +7,9 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
+from thermex.anharmonic.vertices import BareBonds, bare_bonds
 from thermex.crystal.crystal import Crystal
+from thermex.potential.model import PairModel
 
 Array = NDArray[np.float64]
 
@@ -41,3 +43,24 @@ def conventional_crystal(crystal: Crystal) -> Crystal:
         formula_units=crystal.formula_units * multiple,
         displacements=np.zeros((0, len(symbols), 3)),
     )
+
+
+def supercell_bonds(model: PairModel, cell: Crystal, repeat: int, reach: float) -> BareBonds:
+    """List the bonds of ``repeat``³ cells, atoms numbered as (index of the cell)·n + atom.
+
+    Parameters
+    ----------
+    reach
+        Å, at x = 0.
+    """
+    axis = np.arange(repeat)
+    cells = np.stack(np.meshgrid(axis, axis, axis, indexing="ij"), axis=-1).reshape(-1, 3)
+    fractional = (cells[:, None, :] + cell.fractional[None, :, :]).reshape(-1, 3) / repeat
+    whole = replace(
+        cell,
+        lattice=cell.lattice * repeat,
+        fractional=fractional,
+        symbols=cell.symbols * len(cells),
+        masses=np.tile(cell.masses, len(cells)),
+    )
+    return bare_bonds(model, model.particles(whole), reach)

@@ -1,0 +1,208 @@
+"""The error of the quasi-harmonic method for one prediction: the rule, and the correction that was asked for."""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Callable
+from concurrent.futures import Executor, ThreadPoolExecutor
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from thermex import convergence
+from thermex.anharmonic.correction import Quasiharmonic, correct, minimum, solved_states
+from thermex.anharmonic.leading_order import LeadingOrder, applicable, leading_order
+from thermex.anharmonic.rule import anharmonic_rule
+from thermex.anharmonic.sampled_term import SampledFit
+from thermex.anharmonic.sampling import Outlook, Plan, Sampled, sample
+from thermex.case.case import Accuracy
+from thermex.chebyshev import Box
+from thermex.errors import InputError, UnstableCrystalError
+from thermex.free_energy import Term
+from thermex.mesh import divisions_for
+from thermex.potential.model import PairModel
+from thermex.prediction import Anharmonic, AnharmonicRule
+from thermex.road import Travelled
+
+Array = NDArray[np.float64]
+Progress = Callable[[str, int, int], None]
+
+#: Sampling goes this far above the highest temperature asked for, so that α there is no edge of a fit.
+MARGIN = 1.05
+
+#: Above this multiple of T_end nothing is sampled.
+HIGHEST = 1.25
+
+
+@dataclass(frozen=True, slots=True)
+class Method:
+    """The rule at every temperature, the correction if there is one, and what is to be said."""
+
+    rule: AnharmonicRule
+    anharmonic: Anharmonic | None
+    notes: tuple[str, ...]
+
+
+def method_error(
+    accuracy: Accuracy,
+    model: PairModel | None,
+    travelled: Travelled,
+    asked: Array,
+    effective_K: Array,
+    debye_K: float,
+    progress: Progress,
+    executor: Executor | None = None,
+) -> Method:
+    """Say how wrong the quasi-harmonic answer is, and correct it where that was asked for and tested.
+
+    Parameters
+    ----------
+    accuracy
+        ``anharmonic`` ("default", "none", "leading order", "sampled"), ``sampled_error`` and ``seed``.
+    model
+        None when the forces do not come from a pair model.
+    travelled
+        The quasi-harmonic answer.
+    asked
+        Shape (nT,), K: the temperatures of the prediction.
+    effective_K
+        T_eff at the states of ``travelled``.
+    debye_K
+        θ_D; below a quarter of it no correction is given.
+    executor
+        Runs the blocks of a sampling; two threads by default.
+
+    Raises
+    ------
+    InputError
+        Sampling was asked for and the crystal is not one for which it is offered.
+    UnstableCrystalError
+        Sampling was asked for and the harmonic crystal is unstable in the window.
+    """
+    base = quasiharmonic(travelled, asked, effective_K, debye_K)
+    rule = anharmonic_rule(base.effective, base.end_K)
+    if accuracy.anharmonic == "none":
+        return Method(rule, None, ())
+    reason = applicable(base.crystal, model) if model else "it needs an analytic pair potential"
+    if reason and accuracy.anharmonic == "sampled":
+        raise InputError(reason, where="accuracy.anharmonic", fix='"none" gives the quasi-harmonic answer')
+    if reason or model is None:
+        return Method(rule, None, (f"No anharmonic correction: {reason}.",))
+    if accuracy.anharmonic == "sampled":
+        return Method(rule, sampled(base, model, accuracy, travelled, progress, executor), ())
+    try:
+        progress("anharmonicity", 0, 1)
+        found = leading_order(model, base.crystal, base.surface.box.window)
+    except UnstableCrystalError as error:
+        return Method(rule, None, (f"No anharmonic correction: {error.what}.",))
+    progress("anharmonicity", 1, 1)
+    return Method(rule, correct(base, found, "leading order"), ())
+
+
+def quasiharmonic(
+    travelled: Travelled, asked: Array, effective_K: Array, debye_K: float
+) -> Quasiharmonic:
+    """Gather what the correction needs at the temperatures asked for."""
+    states = travelled.solution.states
+    end = travelled.end_K if travelled.ends else float("inf")
+    known = asked <= states.temperature[-1]
+
+    def at(values: Array) -> Array:
+        return np.asarray(np.where(known, np.interp(asked, states.temperature, values), np.nan))
+
+    x = np.interp(asked, states.temperature, states.x[:, 0])
+    return Quasiharmonic(
+        crystal=travelled.lattice.crystal,
+        surface=travelled.solution.surface,
+        load=travelled.load,
+        temperature=asked,
+        x=x[:, None],
+        alpha=at(states.alpha_volume),
+        supercell_error=np.interp(asked, states.temperature, travelled.solution.error.supercell),
+        effective=at(effective_K),
+        end_K=end,
+        debye_K=debye_K,
+    )
+
+
+def sampled(
+    base: Quasiharmonic,
+    model: PairModel,
+    accuracy: Accuracy,
+    travelled: Travelled,
+    progress: Progress,
+    executor: Executor | None,
+) -> Anharmonic:
+    """Sample the anharmonic force along the branch and correct the quasi-harmonic answer with it."""
+    base = _with_room(base, travelled)
+    leading = leading_order(model, base.crystal, base.surface.box.window)
+    highest = min(MARGIN * float(base.temperature.max()), HIGHEST * base.end_K)
+    plan = Plan(highest, accuracy.sampled_error, accuracy.seed)
+    outlook = outlook_on(base, leading, highest)
+    if executor is not None:
+        found = sample(model, base.crystal, leading, outlook, plan, progress, executor.map)
+    else:
+        with ThreadPoolExecutor(min(2, os.cpu_count() or 1)) as pool:
+            found = sample(model, base.crystal, leading, outlook, plan, progress, pool.map)
+    return correct(base, found, "sampled", sampled_notes(found, accuracy))
+
+
+def _with_room(base: Quasiharmonic, travelled: Travelled) -> Quasiharmonic:
+    """Widen the surface to the end of the branch when temperatures past what it covers are asked for."""
+    if float(base.temperature.max()) <= travelled.solution.states.temperature[-1]:
+        return base
+    low, high = base.surface.box.window[0]
+    box = Box(np.array([[low, max(high, float(travelled.end_x[0]))]]), (13,))
+    divisions = divisions_for(base.crystal, 16)
+    return replace(base, surface=convergence.build(travelled.lattice, box, divisions, 1))
+
+
+def outlook_on(base: Quasiharmonic, leading: LeadingOrder, highest: float) -> Outlook:
+    """Return where the minimum lies with a given term, and the error of α that a fit leaves."""
+    judged = base.temperature[
+        (base.temperature >= 0.25 * base.debye_K) & (base.temperature <= highest) & (base.temperature > 0.0)
+    ]
+    steps = highest * np.linspace(0.02, 1.0, 50)
+    low, high = base.surface.box.window[0]
+
+    def strain(term: Term, temperature: Array) -> Array:
+        """Follow the minimum upward from the lowest temperature."""
+        whole = base.surface.best.plus(term)
+        x, path = np.full((1, 1), base.x[0, 0]), []
+        for kelvin in steps:
+            found = solved_states(whole, base.load, np.array([kelvin]), x)
+            if not minimum(whole, base.load, found, base.surface.box.window)[0]:
+                break
+            x = found.x
+            path.append(float(x[0, 0]))
+        if not path:
+            raise UnstableCrystalError("no minimum of the free energy was found", where="sampled anharmonicity")
+        return np.clip(np.interp(temperature, steps[: len(path)], path), low, high)
+
+    def error(fit: SampledFit) -> float:
+        whole = base.surface.best
+        start = strain(fit.best, judged)[:, None]
+        best = solved_states(whole.plus(fit.best), base.load, judged, start)
+        good = minimum(whole.plus(fit.best), base.load, best, base.surface.box.window)
+        total = np.zeros(len(judged))
+        for companion in fit.companions:
+            moved = solved_states(whole.plus(companion), base.load, judged, best.x)
+            total += convergence.relative(moved, best) ** 2
+        return float(np.sqrt(total[good].max())) if good.any() else float("inf")
+
+    return Outlook(strain, error)
+
+
+def sampled_notes(found: Sampled, accuracy: Accuracy) -> tuple[str, ...]:
+    """Say how the sampling was done and how well it went."""
+    notes = [
+        f"Sampled anharmonicity: {found.atoms} atoms, {found.blocks} blocks at each of "
+        f"{len(found.points.temperature)} temperatures to {found.points.temperature[-1]:.0f} K, "
+        f"{found.accepted:.0%} accepted, seed {accuracy.seed}."
+    ]
+    if found.interrupted:
+        notes.append(f"The sampling was interrupted: the error of α reached {found.error:.1%}.")
+    elif found.error > accuracy.sampled_error:
+        notes.append(f"The sampling stopped at an error of α of {found.error:.1%}.")
+    return tuple(notes)
