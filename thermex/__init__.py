@@ -1,0 +1,68 @@
+"""thermex: thermal expansion of crystals from the pair potential one is about to trust.
+
+The face of the package: cases in, predictions out. Everything is imported when first used.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from thermex.case.case import Case
+    from thermex.case.published import case_from_published, published, published_for, published_names
+    from thermex.case.reader import case_from_dict, load_case
+    from thermex.errors import InputError, NoAnswerError, ThermexError
+    from thermex.expansion import predict
+    from thermex.measured import load_material, load_series_file, materials
+    from thermex.prediction import Prediction
+
+__version__ = "0.1.0"
+
+_HOMES = {
+    "Case": "thermex.case.case",
+    "InputError": "thermex.errors",
+    "NoAnswerError": "thermex.errors",
+    "Prediction": "thermex.prediction",
+    "ThermexError": "thermex.errors",
+    "case_from_dict": "thermex.case.reader",
+    "case_from_published": "thermex.case.published",
+    "load_case": "thermex.case.reader",
+    "load_material": "thermex.measured",
+    "load_series_file": "thermex.measured",
+    "materials": "thermex.measured",
+    "predict": "thermex.expansion",
+    "published": "thermex.case.published",
+    "published_for": "thermex.case.published",
+    "published_names": "thermex.case.published",
+}
+
+__all__ = [
+    "Case",
+    "InputError",
+    "NoAnswerError",
+    "Prediction",
+    "ThermexError",
+    "case_from_dict",
+    "case_from_published",
+    "load_case",
+    "load_material",
+    "load_series_file",
+    "materials",
+    "predict",
+    "published",
+    "published_for",
+    "published_names",
+]
+
+
+def __getattr__(name: str) -> Any:
+    """Import a public name on first use (PEP 562)."""
+    if name in _HOMES:
+        return getattr(import_module(_HOMES[name]), name)
+    raise AttributeError(f"module 'thermex' has no attribute {name!r}")
+
+
+def __dir__() -> list[str]:
+    """List the public names."""
+    return sorted([*__all__, "__version__"])
