@@ -95,7 +95,7 @@ def guarded(run: Run, arguments: argparse.Namespace) -> int:
     except MemoryError:
         _say("the job does not fit into the memory of this machine; try a smaller cell or a lower accuracy")
         return 2
-    except Exception as error:  # noqa: BLE001 - the last resort, told in one line
+    except Exception as error:
         _show_traceback(arguments.traceback)
         kind = type(error).__name__
         _say(

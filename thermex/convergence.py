@@ -175,7 +175,7 @@ def supercell_error(
     return SUPERCELL_SHARE * envelope(temperature, difference)
 
 
-def joined(warm: Solution, cold: Solution, use_cold: Array) -> Solution:
+def joined(warm: Solution, cold: Solution, use_cold: NDArray[np.bool_]) -> Solution:
     """Take the cold solution where ``use_cold`` (nT,) is true, the warm one elsewhere."""
 
     def pick(a: Array, b: Array) -> Array:

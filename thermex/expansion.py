@@ -71,9 +71,7 @@ def predict(case: Case, *, progress: Progress = _silent) -> Prediction:
     sampled = sample_modes(travelled)
     watch.lap("modes")
     effective = effective_temperature(travelled)
-    method = method_error(
-        case.accuracy, model, travelled, asked, effective, sampled.debye_moment_K, progress
-    )
+    method = method_error(case.accuracy, model, travelled, asked, effective, sampled.debye_moment_K, progress)
     watch.lap("anharmonic correction")
     return assemble(case, model, ground, travelled, sampled, method, grid, watch.seconds)
 

@@ -148,9 +148,7 @@ class UniformLattice:
 def uniform_lattice(model: PairModel, energy: ScaledEnergy, supercells: Supercells) -> UniformLattice:
     """Do every lattice sum that serves all volumes, once, at the crystal of ``energy``."""
     origin = model.particles(energy.crystal)
-    repeats = {
-        n: supercells.short if n == 1.0 or n > 9.0 else supercells.dispersion for n in model.powers()
-    }
+    repeats = {n: supercells.short if n == 1.0 or n > 9.0 else supercells.dispersion for n in model.powers()}
     # one phonopy object a repetition serves all terms; the charged one keeps its dipole term to itself
     neutral = {r for n, r in repeats.items() if n != 1.0} | {supercells.short}
     cells = {r: supercell(origin, r) for r in neutral}

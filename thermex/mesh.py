@@ -155,7 +155,7 @@ def stability_probes(crystal: Crystal) -> Array:
     points = np.concatenate([np.concatenate([long_wave, along]) @ to_primitive, corners])
     inside = first_zone(crystal.lattice, points)
     away = np.linalg.norm(inside @ np.linalg.inv(crystal.lattice).T, axis=1) > 0.9 * radius
-    return points[away]
+    return np.asarray(points[away])
 
 
 def _distinct_directions(crystal: Crystal) -> list[tuple[int, int, int]]:
@@ -164,7 +164,8 @@ def _distinct_directions(crystal: Crystal) -> list[tuple[int, int, int]]:
     operations = [np.linalg.inv(r).T for r in np.unique(crystal.rotations, axis=0)]
     kept: list[tuple[int, int, int]] = []
     seen: set[tuple[float, ...]] = set()
-    for direction in product((-1, 0, 1), repeat=3):
+    for a, b, c in product((-1, 0, 1), repeat=3):
+        direction = (a, b, c)
         if direction <= (0, 0, 0):
             continue
         vector = np.array(direction) @ to_primitive

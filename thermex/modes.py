@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from thermex import oscillators, phonons
 from thermex.branch import long_wave_scaled
 from thermex.chebyshev import Box
-from thermex.constants import BOLTZMANN, HBAR2_PER_U, PLANCK_THZ
+from thermex.constants import BOLTZMANN, HBAR2_PER_U, PLANCK_THZ, THZ_PER_ROOT
 from thermex.lattice import Motion
 from thermex.mesh import LONG_WAVE, Mesh
 
@@ -44,7 +44,7 @@ def cell_modes(motion: Motion, mesh: Mesh, x: Array, direction: Array) -> CellMo
     plus, minus = motion(x + STEP * direction), motion(x - STEP * direction)
     change = (plus - minus) / (2.0 * STEP)
     slope = np.einsum("qam,qab,qbm->qm", vectors.conj(), change, vectors, optimize=True).real
-    squared = np.maximum((raw / phonons.THZ_PER_ROOT) ** 2, 1e-300)
+    squared = np.maximum((raw / THZ_PER_ROOT) ** 2, 1e-300)
     weights = np.abs(vectors) ** 2
     per_atom = weights.reshape(len(raw), -1, 3, raw.shape[1]).sum(axis=2).swapaxes(1, 2)
     return CellModes(long_wave_scaled(raw, mesh), -0.5 * slope / squared, per_atom)
@@ -112,9 +112,7 @@ def averages(
         Shape (nT, d).
     """
     gamma = np.array([[average_gruneisen(c, mesh.weights, t) for c in cells] for t in temperature])
-    moved = np.array(
-        [[square_displacements(c, masses, mesh.weights, t) for c in cells] for t in temperature]
-    )
+    moved = np.array([[square_displacements(c, masses, mesh.weights, t) for c in cells] for t in temperature])
     at_x, _, _ = box.evaluate(box.coefficients(gamma), x)
     columns = [box.evaluate(box.coefficients(moved[:, :, a]), x)[0] for a in range(len(masses))]
     return ModeAverages(at_x, np.stack(columns, axis=1))

@@ -113,7 +113,7 @@ def _shells(link: Interaction, lengths: Array) -> list[Shells]:
     else:
         lengths = lengths[lengths < np.exp(SEARCH) * link.term.reach()]
     distances, counts = np.unique(np.round(lengths, 8), return_counts=True)
-    return [Shells(link.term, distances, 0.5 * counts)] if len(distances) else []
+    return [Shells(link.term, distances, np.asarray(0.5 * counts, dtype=float))] if len(distances) else []
 
 
 def find_minimum(energy: ScaledEnergy, pressure_GPa: float, where: str = "") -> float:

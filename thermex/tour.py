@@ -146,7 +146,11 @@ def _search(lattice: GeneralLattice, load: Load, highest: float) -> tuple[Box, P
         window = _stretched(path.x, window)
         if np.abs(window).max() > FARTHEST:
             keep = _inside(path.x, box.window, 0.3)
-            return box, Path(path.temperature[keep], path.x[keep], True), "the crystal leaves the range examined"
+            return (
+                box,
+                Path(path.temperature[keep], path.x[keep], True),
+                "the crystal leaves the range examined",
+            )
     keep = _inside(path.x, box.window, 0.3)
     return box, Path(path.temperature[keep], path.x[keep], True), "the path could not be followed further"
 

@@ -27,7 +27,9 @@ def static_path(travelled: Travelled, log_volume: Array, static: Slice) -> Array
     for _ in range(30):
         values = static(x)
         # stationary in the directions that keep ln V: slope + λ t = 0
-        inverse_trace = np.linalg.solve(values.curvature, np.broadcast_to(trace[:, None], (*x.shape, 1)))[..., 0]
+        inverse_trace = np.linalg.solve(values.curvature, np.broadcast_to(trace[:, None], (*x.shape, 1)))[
+            ..., 0
+        ]
         inverse_slope = np.linalg.solve(values.curvature, values.slope[..., None])[..., 0]
         error = x @ trace - log_volume
         multiplier = (error - inverse_slope @ trace) / (inverse_trace @ trace)
@@ -49,14 +51,14 @@ def path_alpha(travelled: Travelled) -> Array:
     step = 1e-4
     pressure = load.pressure_GPa / GPA_PER_EV_A3
     for _ in range(8):
-        slopes, values = _along(travelled, log_volume, static, full, step)
-        force = [s + pressure * np.exp(v) * load.volume_A3 for s, v in zip(slopes, _offsets(log_volume, step), strict=True)]
+        slopes, direction, values = _along(travelled, log_volume, static, full, step)
+        volumes = _offsets(log_volume, step)
+        force = [s + pressure * np.exp(v) * load.volume_A3 for s, v in zip(slopes, volumes, strict=True)]
         curvature = (force[2] - force[0]) / (2.0 * step)
         change = -force[1] / curvature
         log_volume = log_volume + np.clip(change, -0.005, 0.005)
         if np.abs(change).max() < 1e-10:
             break
-    direction, values = values
     entropy_slope = np.einsum("td,td->t", values.entropy_slope, direction)
     return np.asarray(np.where(curvature > 0.0, entropy_slope / curvature, np.nan))
 
@@ -67,18 +69,11 @@ def _offsets(log_volume: Array, step: float) -> tuple[Array, Array, Array]:
 
 def _along(
     travelled: Travelled, log_volume: Array, static: Slice, full: Slice, step: float
-) -> tuple[list[Array], tuple[Array, TermValues]]:
+) -> tuple[list[Array], Array, TermValues]:
     """Return dF/d ln V along the path at three neighbouring volumes, and direction and values there."""
+    points = [static_path(travelled, log_volume + k * step, static) for k in (-2, -1, 0, 1, 2)]
     slopes = []
-    kept: tuple[Array, TermValues] | None = None
-    for k, volume in enumerate(_offsets(log_volume, step)):
-        x = static_path(travelled, volume, static)
-        ahead = static_path(travelled, volume + step, static)
-        behind = static_path(travelled, volume - step, static)
-        direction = (ahead - behind) / (2.0 * step)
-        values = full(x)
-        slopes.append(np.einsum("td,td->t", values.slope, direction))
-        if k == 1:
-            kept = (direction, values)
-    assert kept is not None
-    return slopes, kept
+    for k in (1, 2, 3):
+        direction = (points[k + 1] - points[k - 1]) / (2.0 * step)
+        slopes.append(np.einsum("td,td->t", full(points[k]).slope, direction))
+    return slopes, (points[3] - points[1]) / (2.0 * step), full(points[2])

@@ -54,15 +54,15 @@ def _pair(walker: Walker, value: object, where: str, folder: Path) -> PairSpec |
     parameters = _parameters(walker, content, form, where) if form else {}
     file = None
     if form == "tabulated":
-        if "file" in found and found["file"]:
+        if found.get("file"):
             file = existing(walker, folder, found["file"], f"{where}.file")
         else:
             walker.fault(f"{where}.file", "is missing", "give the table of the pair")
     if len(walker.faults) > before:
         return None
     return PairSpec(
-        between=between,
-        form=form,
+        between=(found["between"][0], found["between"][1]),
+        form=str(form),
         parameters=parameters,
         static_distance=found.get("static_distance"),
         cutoff=found.get("cutoff"),
@@ -94,7 +94,9 @@ def _parameters(walker: Walker, content: Mapping[str, Any], form: str, where: st
             default = OPTIONAL.get(form, {}).get(name)
             if default is None:
                 unit = PARAMETERS[name].unit
-                walker.fault(f"{where}.{short(name)}", "is missing", f"give {name}{f' in {unit}' if unit else ''}")
+                walker.fault(
+                    f"{where}.{short(name)}", "is missing", f"give {name}{f' in {unit}' if unit else ''}"
+                )
             else:
                 out[name] = default
     if form == "Mie" and "n" in out and "m" in out and out["n"] <= out["m"]:

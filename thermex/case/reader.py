@@ -53,7 +53,9 @@ def load_case(path: str | Path) -> Case:
     except OSError as error:
         raise InputError(f"cannot be read ({error.strerror})", where=name) from None
     except UnicodeDecodeError as error:
-        raise InputError(f"is not UTF-8 text (byte {error.start})", where=name, fix="save it as UTF-8") from None
+        raise InputError(
+            f"is not UTF-8 text (byte {error.start})", where=name, fix="save it as UTF-8"
+        ) from None
     except tomllib.TOMLDecodeError as error:
         raise InputError(f"is not valid TOML ({error})", where=name, fix="mend the line named") from None
     except (RecursionError, ValueError) as error:
@@ -107,14 +109,16 @@ def _crystal(walker: Walker, value: object, folder: Path) -> CrystalSpec:
         walker.fault("crystal", "is missing", "say what sits where: prototype and sites, or file")
         return empty
     found = _flat(walker, "crystal", value)
-    lattice = {k: found[k] for k in ("a", "b", "c") if k in found}
+    lattice: dict[str, float] = {k: found[k] for k in ("a", "b", "c") if k in found}
     file = None
     if "file" in found:
         file = existing(walker, folder, found["file"], "crystal.file")
         if "prototype" in found:
             walker.fault("crystal.file", "stands beside prototype", "keep one of the two")
     elif "prototype" not in found and isinstance(value, Mapping) and "prototype" not in value:
-        walker.fault("crystal.prototype", "is missing", 'name a structure type, such as "rock salt", or a file')
+        walker.fault(
+            "crystal.prototype", "is missing", 'name a structure type, such as "rock salt", or a file'
+        )
     for name, mass in found.get("masses", {}).items():
         if not 0.1 <= mass <= 1000.0:
             walker.fault(f"crystal.masses.{name}", f"is {mass:g}", "give a mass from 0.1 to 1000 u")
@@ -131,7 +135,7 @@ def _crystal(walker: Walker, value: object, folder: Path) -> CrystalSpec:
 
 def _matched(walker: Walker, spec: CrystalSpec) -> CrystalSpec:
     """Check the sites and inner coordinates against the prototype."""
-    from thermex.crystal.build import element_of
+    from thermex.crystal.elements import element_of
     from thermex.crystal.prototypes import find_prototype
 
     if spec.prototype is None:
@@ -142,14 +146,14 @@ def _matched(walker: Walker, spec: CrystalSpec) -> CrystalSpec:
         walker.fault("crystal.prototype", error.what, error.fix)
         return spec
     if len(spec.sites) != len(prototype.counts):
-        meaning = f": {prototype.meaning}" if prototype.meaning else ""
+        meaning = f": {prototype.remark}" if prototype.remark else ""
         given = ", ".join(spec.sites) or "none"
         walker.fault(
             "crystal.sites",
             f"names {given}",
             f"{prototype.name} has {len(prototype.counts)} sites{meaning}",
         )
-    walker.unknown(spec.inner, prototype.inner, "crystal.inner")
+    walker.unknown(spec.inner, [c.name for c in prototype.inner], "crystal.inner")
     for k, label in enumerate(spec.sites):
         try:
             element_of(label)
@@ -160,7 +164,7 @@ def _matched(walker: Walker, spec: CrystalSpec) -> CrystalSpec:
 
 def _potential(walker: Walker, value: object, folder: Path) -> PotentialSpec:
     if value is None:
-        walker.fault("potential", "is missing", "give pairs of your own, or published = \"…\"")
+        walker.fault("potential", "is missing", 'give pairs of your own, or published = "…"')
         return PotentialSpec({}, ())
     content = walker.table(value, "potential")
     found = _flat(walker, "potential", content)

@@ -169,5 +169,7 @@ def case_hash(case: Case) -> str:
             digest.update(file.read_bytes())
     atoms: Any = case.crystal.atoms
     if atoms is not None:
-        digest.update(repr((atoms.get_chemical_symbols(), atoms.positions.tolist(), atoms.cell.tolist())).encode())
+        digest.update(
+            repr((atoms.get_chemical_symbols(), atoms.positions.tolist(), atoms.cell.tolist())).encode()
+        )
     return digest.hexdigest()

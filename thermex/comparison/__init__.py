@@ -1,1 +1,1 @@
-
+"""A prediction against measured values: deviations, budget, sensitivity, trust."""

@@ -1,1 +1,1 @@
-
+"""What sits where: structure types, structure files and their symmetry."""

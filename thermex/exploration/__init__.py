@@ -1,1 +1,1 @@
-
+"""Many predictions: sweeps, matching a measured value, fitting parameters."""

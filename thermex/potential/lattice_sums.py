@@ -224,7 +224,7 @@ def _gathered(index: NDArray[np.int64], values: Array, size: int) -> Array:
     """Sum rows of values (nb, …) by index, shape (size, …)."""
     flat = values.reshape(len(values), -1)
     columns = [np.bincount(index, flat[:, k], minlength=size) for k in range(flat.shape[1])]
-    return np.stack(columns, axis=-1).reshape(size, *values.shape[1:])
+    return np.asarray(np.stack(columns, axis=-1).reshape(size, *values.shape[1:]), dtype=float)
 
 
 def _add_pairs(hessian: Array, bonds: Bonds, matrices: Array, m: int) -> None:

@@ -63,7 +63,7 @@ class Exponential:
 
     def reach(self) -> float:
         """Distance at which the term has fallen to ``NEGLIGIBLE``."""
-        return self.rho * max(np.log(max(abs(self.amplitude), 1e-300) / NEGLIGIBLE), 1.0)
+        return float(self.rho * max(np.log(max(abs(self.amplitude), 1e-300) / NEGLIGIBLE), 1.0))
 
 
 @dataclass(frozen=True, slots=True)
