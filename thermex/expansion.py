@@ -114,12 +114,12 @@ def sample_modes(travelled: Travelled) -> SampledModes:
     lattice, states = travelled.lattice, travelled.solution.states
     crystal = lattice.crystal
     mesh = graded(crystal, divisions_for(crystal, 8 if crystal.size < 8 else 4))
-    sphere = long_wave_sphere(crystal, 24 if crystal.size < 8 else 10)
+    sphere = long_wave_sphere(crystal, 18 if crystal.size < 8 else 10)
     motion, slow = lattice.motion(mesh.points), lattice.motion(sphere.points)
     log_volume = states.x @ travelled.load.trace
     low, high = float(log_volume.min()), float(log_volume.max())
     margin = 0.05 * (high - low) + 1e-5
-    box = Box(np.array([[low - margin, high + margin]]), (4 if crystal.size < 8 else 2,))
+    box = Box(np.array([[low - margin, high + margin]]), (3 if crystal.size < 8 else 2,))
     direction = squeeze(travelled)
     order = np.argsort(log_volume)
     warm = []

@@ -18,6 +18,7 @@ from numpy.typing import NDArray
 from thermex.chebyshev import Box
 from thermex.crystal.crystal import Crystal
 from thermex.free_energy import Term
+from thermex.mesh import first_zone
 from thermex.phonons import Dynamics, MassWeighting, Supercell, direct, interpolate, supercell
 from thermex.potential.dynamical import direct_force_constants, folded_bonds
 from thermex.potential.lattice_sums import BondTable, bond_table, radial_of
@@ -113,9 +114,10 @@ class UniformLattice:
         """Return the dynamical matrices through phonopy; see :class:`Lattice`."""
         scaled = {n: dynamics(points) for n, dynamics in self.scaled.items()}
         size, repeat = len(self.cell.shift), self.supercells.short
+        inside = first_zone(self.crystal.lattice, points)
 
         def short(scale: float) -> Complex:
-            return self.cell.dynamics(folded_bonds(radial_of(self.table, scale), size, repeat))(points)
+            return self.cell.dynamics(folded_bonds(radial_of(self.table, scale), size, repeat))(inside)
 
         return self._assembled(scaled, short)
 
@@ -149,12 +151,7 @@ def uniform_lattice(model: PairModel, energy: ScaledEnergy, supercells: Supercel
     """Do every lattice sum that serves all volumes, once, at the crystal of ``energy``."""
     origin = model.particles(energy.crystal)
     repeats = {n: supercells.short if n == 1.0 or n > 9.0 else supercells.dispersion for n in model.powers()}
-    # one phonopy object a repetition serves all terms; the charged one keeps its dipole term to itself
-    neutral = {r for n, r in repeats.items() if n != 1.0} | {supercells.short}
-    cells = {r: supercell(origin, r) for r in neutral}
-    scaled = {
-        n: interpolate(model.power_model(n), origin, supercell(origin, r) if n == 1.0 else cells[r])
-        for n, r in repeats.items()
-    }
+    cells = {r: supercell(origin, r) for r in {supercells.short, *repeats.values()}}
+    scaled = {n: interpolate(model.power_model(n), origin, cells[r]) for n, r in repeats.items()}
     table = bond_table(model.short_model(), origin)
     return UniformLattice(model, energy, supercells, scaled, cells[supercells.short], table)

@@ -27,9 +27,10 @@ _OFFSET = 1e-4
 
 @dataclass(frozen=True, slots=True)
 class Supercell:
-    """A phonopy object for one cell and repetition, and how our force constants map onto it."""
+    """Phonopy's supercell for one cell and repetition, and how our force constants map onto it."""
 
-    phonopy: Any
+    supercell: Any
+    primitive: Any
     lattice: Array
     repeat: tuple[int, int, int]
     owner: NDArray[np.int64]
@@ -40,7 +41,7 @@ class Supercell:
     """Shape (m, 3): fractional set-off of coinciding centres."""
 
     def dynamics(self, folded: Array, charges: Array | None = None) -> Dynamics:
-        """Return phonopy's interpolation Φ(q) of folded force constants.
+        """Return phonopy's interpolation Φ(q) of folded force constants, for q in the first zone.
 
         Parameters
         ----------
@@ -51,31 +52,33 @@ class Supercell:
             Phys. Rev. B 55, 10355 (1997), doi:10.1103/PhysRevB.55.10355) carries the long-ranged
             part, with ε∞ = 1.
         """
-        from phonopy.harmonic.dynamical_matrix import get_dynamical_matrices_at_qpoints
+        from phonopy.harmonic.dynamical_matrix import get_dynamical_matrices_at_qpoints, get_dynamical_matrix
 
         compact = folded[:, self.owner, self.index[:, 0], self.index[:, 1], self.index[:, 2]]
-        self.phonopy.force_constants = np.ascontiguousarray(compact, dtype="double")
+        parameters = None
         if charges is not None:
             born = charges[:, None, None] * np.eye(3)
             parameters = {"born": born, "dielectric": np.eye(3), "factor": COULOMB, "method": "gonze"}
-            self.phonopy.nac_params = parameters
-        matrices = self.phonopy.dynamical_matrix
+        matrices = get_dynamical_matrix(
+            np.ascontiguousarray(compact, dtype="double"), self.supercell, self.primitive, parameters
+        )
+        if parameters is not None:
+            matrices.make_Gonze_nac_dataset()
 
         def dynamics(q: Array) -> Complex:
-            points = first_zone(self.lattice, np.atleast_2d(q))
-            values = np.asarray(get_dynamical_matrices_at_qpoints(matrices, points))
+            values = np.asarray(get_dynamical_matrices_at_qpoints(matrices, q))
             if not self.shift.any():
                 return values
-            phase = np.repeat(np.exp(2j * np.pi * points @ self.shift.T), 3, axis=1)
+            phase = np.repeat(np.exp(2j * np.pi * q @ self.shift.T), 3, axis=1)
             return np.asarray(values * phase[:, :, None] * phase.conj()[:, None, :])
 
         return dynamics
 
 
 def supercell(particles: Particles, repeat: tuple[int, int, int]) -> Supercell:
-    """Build the phonopy object of a supercell; centres (cores and shells) enter with unit mass."""
-    from phonopy import Phonopy
+    """Build phonopy's supercell; centres (cores and shells) enter with unit mass."""
     from phonopy.structure.atoms import PhonopyAtoms
+    from phonopy.structure.cells import get_primitive, get_supercell
 
     inverse = np.linalg.inv(particles.lattice)
     shift = _offsets(particles) @ inverse
@@ -85,19 +88,20 @@ def supercell(particles: Particles, repeat: tuple[int, int, int]) -> Supercell:
         scaled_positions=particles.positions @ inverse + shift,
         masses=np.ones(particles.size),
     )
-    phonopy = Phonopy(cell, supercell_matrix=np.diag(repeat), primitive_matrix="P", is_symmetry=False)
-    big = phonopy.supercell
+    big = get_supercell(cell, np.diag(repeat))
+    primitive = get_primitive(big, np.diag(1.0 / np.array(repeat)))
     owner = np.array([big.u2u_map[k] for k in big.s2u_map])
-    cells = big.scaled_positions * np.array(repeat) - phonopy.unitcell.scaled_positions[owner]
+    cells = big.scaled_positions * np.array(repeat) - cell.scaled_positions[owner]
     index = np.rint(cells).astype(int) % np.array(repeat)
-    return Supercell(phonopy, particles.lattice, repeat, owner, index, shift)
+    return Supercell(big, primitive, particles.lattice, repeat, owner, index, shift)
 
 
 def interpolate(model: PairModel, particles: Particles, cell: Supercell) -> Dynamics:
-    """Hand the force constants of a supercell, all lattice sums complete, to phonopy."""
+    """Hand the force constants of a supercell, all lattice sums complete, to phonopy; any q."""
     folded = supercell_force_constants(model, particles, cell.repeat)
     charges = np.array([model.kinds[k].charge for k in particles.kind])
-    return cell.dynamics(folded, charges if model.has_charges else None)
+    dynamics = cell.dynamics(folded, charges if model.has_charges else None)
+    return lambda q: dynamics(first_zone(particles.lattice, np.atleast_2d(q)))
 
 
 def _offsets(particles: Particles) -> Array:

@@ -96,7 +96,7 @@ def travel(
         progress("phonons", 2, 4)
         solution = _solve(lattice, branch, load, wanted, accuracy)
         progress("supercell", 3, 4)
-        excess = convergence.supercell_error(lattice, solution, load)
+        excess = convergence.supercell_error(lattice, solution, load, 6, 3)
         solution = replace(solution, error=replace(solution.error, supercell=excess))
         limit = np.where(_judged(wanted, branch), 0.5 * accuracy, 1.5 * accuracy)
         coldest = convergence.highest_phonon_K(solution.surface.frequencies) / 100.0

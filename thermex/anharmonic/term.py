@@ -42,7 +42,7 @@ class AnharmonicTerm:
                 (squared * f_xx)[:, None, None],
                 linear * f,
                 (linear * f_x)[:, None],
-                linear * temperature * f,
+                linear * f,
             )
 
         return evaluate

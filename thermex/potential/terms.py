@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 Array = NDArray[np.float64]
 
 #: Energy below which a short-ranged term is dropped, eV.
-NEGLIGIBLE = 1e-15
+NEGLIGIBLE = 1e-13
 
 
 class Term(Protocol):
