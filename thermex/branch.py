@@ -166,9 +166,7 @@ def refuse_unstable(points: Array, found: Array, where: str) -> None:
         )
 
 
-def refine_end(
-    branch: Branch, load: Load, surface_on: Callable[[float, float], FreeEnergy]
-) -> tuple[float, float]:
+def refine_end(branch: Branch, load: Load, surface_on: Callable[[float, float], FreeEnergy]) -> tuple[float, float]:
     """Return (x, T) of the branch end on a better surface, built on a window around it.
 
     Parameters

@@ -54,9 +54,7 @@ def main(argv: list[str] | None = None) -> int:
 def build_parser() -> argparse.ArgumentParser:
     """Return the parser with every command in it."""
     common = argparse.ArgumentParser(add_help=False)
-    common.add_argument(
-        "--traceback", action="store_true", help="after a failure, show where in the program it arose"
-    )
+    common.add_argument("--traceback", action="store_true", help="after a failure, show where in the program it arose")
     parser = argparse.ArgumentParser(
         prog="thermex",
         description="Thermal expansion of a crystal from its pair potential, beside measured values.",
@@ -98,9 +96,7 @@ def guarded(run: Run, arguments: argparse.Namespace) -> int:
     except Exception as error:
         _show_traceback(arguments.traceback)
         kind = type(error).__name__
-        _say(
-            f"a fault in thermex itself ({kind}: {error}); run again with --traceback and report what it shows"
-        )
+        _say(f"a fault in thermex itself ({kind}: {error}); run again with --traceback and report what it shows")
         return INTERNAL_FAULT
 
 

@@ -153,9 +153,7 @@ class _Difference:
         return evaluate
 
 
-def supercell_error(
-    lattice: Lattice, solution: Solution, load: Load, divisions: int = 6, points: int = 5
-) -> Array:
+def supercell_error(lattice: Lattice, solution: Solution, load: Load, divisions: int = 6, points: int = 5) -> Array:
     """Return the relative error of α by interpolation between commensurate q, shape (nT,).
 
     Phonons on one small mesh are computed twice, with phonopy's Φ(q) and with the direct lattice
@@ -183,9 +181,7 @@ def joined(warm: Solution, cold: Solution, use_cold: NDArray[np.bool_]) -> Solut
         return np.where(mask, b, a)
 
     merged = States(*(pick(getattr(warm.states, f), getattr(cold.states, f)) for f in States.__slots__))
-    error = NumericalError(
-        *(pick(getattr(warm.error, f), getattr(cold.error, f)) for f in NumericalError.__slots__)
-    )
+    error = NumericalError(*(pick(getattr(warm.error, f), getattr(cold.error, f)) for f in NumericalError.__slots__))
     return Solution(merged, error, warm.surface)
 
 

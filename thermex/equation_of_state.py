@@ -30,9 +30,7 @@ def vinet(volume: Array, e0: float, v0: float, b0: float, b1: float) -> Array:
 def birch_murnaghan(volume: Array, e0: float, v0: float, b0: float, b1: float) -> Array:
     """Return the third-order Birch–Murnaghan energy (eV) for B₀ in eV/Å³."""
     f = (v0 / volume) ** (2.0 / 3.0) - 1.0
-    return np.asarray(
-        e0 + 9.0 / 16.0 * v0 * b0 * (f**3 * b1 + f**2 * (6.0 - 4.0 * (v0 / volume) ** (2.0 / 3.0)))
-    )
+    return np.asarray(e0 + 9.0 / 16.0 * v0 * b0 * (f**3 * b1 + f**2 * (6.0 - 4.0 * (v0 / volume) ** (2.0 / 3.0))))
 
 
 _FORMS: dict[str, Callable[..., Array]] = {

@@ -17,7 +17,8 @@ from thermex.crystal.build import build_crystal
 from thermex.crystal.crystal import Crystal
 from thermex.errors import InputError
 from thermex.free_energy import Vibrations
-from thermex.ground import Ground, fixed_ground, relaxed_ground
+from thermex.calculator_lattice import named_calculator
+from thermex.ground import Ground, calculator_ground, fixed_ground, relaxed_ground
 from thermex.mesh import Mesh, divisions_for, graded, long_wave_sphere
 from thermex.potential.bonds import find_bonds
 from thermex.potential.build import pair_model
@@ -31,6 +32,13 @@ from thermex.volume_path import path_alpha
 from thermex.zone_centre import zone_centre
 
 Array = NDArray[np.float64]
+
+
+#: Said of every prediction from an ASE calculator.
+CALCULATOR_NOTE = (
+    "Forces come from an ASE calculator by finite displacements of 0.01 Å; the error of the supercell is taken from "
+    "one half as long again."
+)
 
 
 def _silent(stage: str, done: int, total: int) -> None:
@@ -56,16 +64,10 @@ def predict(case: Case, *, progress: Progress = _silent) -> Prediction:
     """
     watch = Stopwatch()
     crystal = build_crystal(case.crystal)
-    model = pair_model(case.potential, crystal)
-    refuse_collapsed(model, crystal, case.source)
-    freedom = freedom_of(model, crystal)
+    ground, model = ground_of(case, crystal)
+    watch.lap("static lattice")
     asked = np.array(case.conditions.temperatures, dtype=float)
     grid = np.unique(np.concatenate([asked, [case.conditions.reference_temperature, 0.0]]))
-    if len(crystal.axes) == 1 and len(freedom.inner) == 0:
-        ground = fixed_ground(case, model, crystal)
-    else:
-        ground = relaxed_ground(case, model, crystal, freedom)
-    watch.lap("static lattice")
     travelled = ground.travel(grid, case.accuracy.alpha, progress)
     watch.lap("phonons and equilibrium")
     sampled = sample_modes(travelled)
@@ -74,6 +76,21 @@ def predict(case: Case, *, progress: Progress = _silent) -> Prediction:
     method = method_error(case.accuracy, model, travelled, asked, effective, sampled.debye_moment_K, progress)
     watch.lap("anharmonic correction")
     return assemble(case, model, ground, travelled, sampled, method, grid, watch.seconds)
+
+
+def ground_of(case: Case, crystal: Crystal) -> tuple[Ground, PairModel | None]:
+    """Find the static lattice of a case, and its pair model unless forces come from a calculator."""
+    calculator = getattr(case.crystal.atoms, "calc", None) if not case.potential.pairs else None
+    if case.potential.calculator:
+        calculator = named_calculator(case.potential.calculator)
+    if calculator is not None:
+        return calculator_ground(case, crystal, calculator), None
+    model = pair_model(case.potential, crystal)
+    refuse_collapsed(model, crystal, case.source)
+    freedom = freedom_of(model, crystal)
+    if len(crystal.axes) == 1 and len(freedom.inner) == 0:
+        return fixed_ground(case, model, crystal), model
+    return relaxed_ground(case, model, crystal, freedom), model
 
 
 def refuse_collapsed(model: PairModel, crystal: Crystal, where: str) -> None:
@@ -143,7 +160,7 @@ def squeeze(travelled: Travelled) -> Array:
 
 def assemble(
     case: Case,
-    model: PairModel,
+    model: PairModel | None,
     ground: Ground,
     travelled: Travelled,
     sampled: SampledModes,
@@ -180,7 +197,7 @@ def assemble(
     gamma, gamma_modes, debye = _cold_limits(travelled, sampled, averages.gruneisen)
     effective = effective_temperature(travelled)
     conventions = _conventions(case, travelled, lattice, grid)
-    centre = zone_centre(model, ground.configuration.particles(model), crystal.masses)
+    centre = zone_centre(model, ground.configuration.particles(model), crystal.masses) if model else None
     return Prediction(
         case=case,
         crystal=crystal,
@@ -230,9 +247,7 @@ def _spread_error(error: NumericalError, spread: object) -> NumericalError:
     return NumericalError(*(spread(getattr(error, f)) for f in NumericalError.__slots__))  # type: ignore[operator]
 
 
-def _cold_limits(
-    travelled: Travelled, sampled: SampledModes, mode_gamma: Array
-) -> tuple[Array, Array, Array]:
+def _cold_limits(travelled: Travelled, sampled: SampledModes, mode_gamma: Array) -> tuple[Array, Array, Array]:
     """Return γ, mode-average γ and θ_D with their T → 0 limits, from long waves alone, at T = 0."""
     states = travelled.solution.states
     size = travelled.lattice.crystal.size
@@ -304,8 +319,8 @@ def _mode_samples(travelled: Travelled, sampled: SampledModes) -> tuple[ModeSamp
     return tuple(out)
 
 
-def _notes(case: Case, model: PairModel, static: StaticLattice, travelled: Travelled) -> tuple[str, ...]:
-    notes = list(model.description)
+def _notes(case: Case, model: PairModel | None, static: StaticLattice, travelled: Travelled) -> tuple[str, ...]:
+    notes = list(model.description) if model else [CALCULATOR_NOTE]
     for pair, distance in static.turning_points_A.items():
         notes.append(f"{pair}: the potential turns over towards collapse inside {distance:.3f} Å.")
     if travelled.ends:
@@ -316,9 +331,7 @@ def _notes(case: Case, model: PairModel, static: StaticLattice, travelled: Trave
                 "the quasi-harmonic approximation."
             )
     if case.conditions.reference_temperature > travelled.end_K and travelled.ends:
-        notes.append(
-            "The reference temperature lies past the branch end: ΔL/L₀ and mean coefficients are empty."
-        )
+        notes.append("The reference temperature lies past the branch end: ΔL/L₀ and mean coefficients are empty.")
     if len(static.crystal.displacements):
         notes.append(
             "Inner coordinates follow the static forces at every cell (zero static internal stress approximation)."

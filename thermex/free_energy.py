@@ -98,9 +98,7 @@ class Vibrations:
     def at(self, temperature: Array) -> Slice:
         """Fix the temperatures; see :class:`Term`."""
         totals = oscillators.sums(self.frequencies, self.weights, temperature)
-        energy, entropy, heat = (
-            self._coefficients(part) for part in (totals.energy, totals.entropy, totals.heat)
-        )
+        energy, entropy, heat = (self._coefficients(part) for part in (totals.energy, totals.entropy, totals.heat))
 
         def evaluate(x: Array) -> TermValues:
             f, f_x, f_xx = self.box.evaluate(energy, x)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 from itertools import product
 
@@ -109,13 +110,14 @@ class FittedEnergy:
         return temperature_free(lambda x: self.box.evaluate(repeated, x))
 
 
-def fitted_energy(box: Box, rows: list[tuple[float, Array, Array]]) -> FittedEnergy:
-    """Fit a polynomial to values, slopes and curvatures at the points of a box (least squares).
+def fitted_energy(box: Box, rows: Sequence[tuple[float, Array, Array | None]]) -> FittedEnergy:
+    """Fit a polynomial to values, slopes and (where given) curvatures at the points of a box.
 
     Its total degree is the highest for which the data leave twice as many equations as unknowns.
     """
     d = len(box.counts)
-    degree = _degree(d, len(rows))
+    curved = rows[0][2] is not None
+    degree = _degree(d, len(rows), 1 + d + (d * (d + 1) // 2 if curved else 0))
     wide = Box(box.window, (degree + 1,) * d)
     exponents = [e for e in product(range(degree + 1), repeat=d) if sum(e) <= degree]
     width = 0.5 * (box.window[:, 1] - box.window[:, 0])
@@ -125,9 +127,11 @@ def fitted_energy(box: Box, rows: list[tuple[float, Array, Array]]) -> FittedEne
         one = np.zeros((1, *wide.counts))
         one[(0, *e)] = 1.0
         value, slope, curvature = wide.evaluate(np.repeat(one, len(points), axis=0), points)
-        columns.append(_stacked(value, slope * width, curvature * np.outer(width, width), d))
-    value, slope, curvature = (np.array([row[k] for row in rows]) for k in range(3))
-    data = _stacked(value - value.mean(), slope * width, curvature * np.outer(width, width), d)
+        bent = curvature * np.outer(width, width) if curved else None
+        columns.append(_stacked(value, slope * width, bent, d))
+    value, slope = np.array([row[0] for row in rows]), np.array([row[1] for row in rows])
+    bent = np.array([row[2] for row in rows]) * np.outer(width, width) if curved else None
+    data = _stacked(value - value.mean(), slope * width, bent, d)
     solution, *_ = np.linalg.lstsq(np.array(columns).T, data, rcond=None)
     coefficients = np.zeros((1, *wide.counts))
     for e, c in zip(exponents, solution, strict=True):
@@ -136,16 +140,16 @@ def fitted_energy(box: Box, rows: list[tuple[float, Array, Array]]) -> FittedEne
     return FittedEnergy(wide, coefficients)
 
 
-def _degree(d: int, points: int) -> int:
+def _degree(d: int, points: int, each: int) -> int:
     from math import comb
 
-    equations = points * (1 + d + d * (d + 1) // 2)
+    equations = points * each
     degree = 2
     while comb(degree + 1 + d, d) * 2 <= equations and degree < 14:
         degree += 1
     return degree
 
 
-def _stacked(value: Array, slope: Array, curvature: Array, d: int) -> Array:
-    upper = [curvature[:, a, b] for a in range(d) for b in range(a, d)]
+def _stacked(value: Array, slope: Array, curvature: Array | None, d: int) -> Array:
+    upper = [] if curvature is None else [curvature[:, a, b] for a in range(d) for b in range(a, d)]
     return np.concatenate([value, *slope.T, *upper])

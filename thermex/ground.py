@@ -4,12 +4,14 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from thermex import elastic, equation_of_state
+from thermex import calculator_lattice, elastic, equation_of_state
 from thermex.case.case import Case
+from thermex.chebyshev import Box
 from thermex.constants import GPA_PER_EV_A3
 from thermex.crystal.crystal import Crystal
 from thermex.equilibrium import load_on
@@ -39,6 +41,9 @@ Onward = Callable[[Array, float, Progress], Travelled]
 
 #: Span of the supercell of a general crystal, in mean distances.
 GENERAL_SPAN = 4.6
+
+#: The same for a crystal under an ASE calculator, whose supercells are displaced one by one.
+CALCULATOR_SPAN = 4.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -93,6 +98,36 @@ def relaxed_ground(case: Case, model: PairModel, crystal: Crystal, freedom: Free
         return tour(lattice, load, temperature, accuracy, progress)
 
     return Ground(state, static, (), onward)
+
+
+def calculator_ground(case: Case, crystal: Crystal, calculator: Any) -> Ground:
+    """Find the static lattice of any crystal under an ASE calculator."""
+    pressure = case.conditions.pressure
+    settled = calculator_lattice.relax_cell(crystal, calculator, pressure / GPA_PER_EV_A3)
+    configuration = Configuration(settled, np.zeros((0, 3)))
+    supercells = supercells_for(settled, CALCULATOR_SPAN)
+    lattice = calculator_lattice.CalculatorLattice(settled, calculator, supercells)
+    d = len(settled.axes)
+    window = np.tile([-0.01, 0.01], (d, 1))
+    energy = lattice.static_over(Box(window, (4,) * d)).at(np.zeros(1))
+    values = energy(np.zeros((1, d)))
+    modulus = _modulus(configuration, values.curvature[0], pressure)
+    static = StaticLattice(
+        crystal=settled,
+        energy_eV=float(values.energy[0]),
+        bulk_modulus_GPa=modulus,
+        bulk_modulus_derivative=float("nan"),
+        elastic_GPa=np.full((6, 6), np.nan),
+        lowest_elastic_eigenvalue_GPa=float("nan"),
+        nearest_distance_A=nearest_distance(settled),
+        turning_points_A={},
+    )
+    load = load_on(settled, pressure)
+
+    def onward(temperature: Array, accuracy: float, progress: Progress) -> Travelled:
+        return tour(lattice, load, temperature, accuracy, progress)
+
+    return Ground(configuration, static, (), onward)
 
 
 def _modulus(state: Configuration, curvature: Array, pressure: float) -> float:

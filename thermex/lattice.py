@@ -53,6 +53,15 @@ class Lattice(Protocol):
         ...
 
 
+class BoxLattice(Lattice, Protocol):
+    """A lattice whose static energy is known over boxes of strains, with supercells of its own."""
+
+    @property
+    def supercells(self) -> Supercells:
+        """The supercells in use."""
+        ...
+
+
 #: Largest number of atoms in a supercell.
 MOST = 2000
 

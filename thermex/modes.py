@@ -99,9 +99,7 @@ class ModeAverages:
     """Shape (nT, n), Å²."""
 
 
-def averages(
-    cells: list[CellModes], box: Box, mesh: Mesh, masses: Array, x: Array, temperature: Array
-) -> ModeAverages:
+def averages(cells: list[CellModes], box: Box, mesh: Mesh, masses: Array, x: Array, temperature: Array) -> ModeAverages:
     """Average γ and ⟨u²⟩ at every temperature, interpolated between the cells of a box.
 
     Parameters

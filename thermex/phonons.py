@@ -115,6 +115,44 @@ def _offsets(particles: Particles) -> Array:
     return shifts
 
 
+def displaced_dynamics(atoms: Any, calculator: Any, repeat: tuple[int, int, int], points: Array) -> Complex:
+    """Return dynamical matrices (nq, 3n, 3n) from forces on displaced supercells, symmetry used.
+
+    Parameters
+    ----------
+    atoms
+        Primitive cell, ASE Atoms with the masses to use.
+    calculator
+        ASE calculator.
+    points
+        Shape (nq, 3), primitive reciprocal units.
+    """
+    from ase import Atoms
+    from phonopy import Phonopy
+    from phonopy.harmonic.dynamical_matrix import get_dynamical_matrices_at_qpoints
+    from phonopy.structure.atoms import PhonopyAtoms
+
+    cell = PhonopyAtoms(
+        symbols=atoms.get_chemical_symbols(),
+        cell=atoms.cell.array,
+        scaled_positions=atoms.get_scaled_positions(),
+        masses=atoms.get_masses(),
+    )
+    phonopy = Phonopy(cell, supercell_matrix=np.diag(repeat), primitive_matrix="P")
+    phonopy.generate_displacements(distance=0.01)
+    forces = []
+    for displaced in phonopy.supercells_with_displacements:
+        big = Atoms(displaced.symbols, cell=displaced.cell, positions=displaced.positions, pbc=True)
+        big.calc = calculator
+        found = big.get_forces()
+        forces.append(found - found.mean(axis=0))
+    phonopy.forces = forces
+    phonopy.produce_force_constants()
+    phonopy.symmetrize_force_constants()
+    inside = first_zone(atoms.cell.array, points)
+    return np.asarray(get_dynamical_matrices_at_qpoints(phonopy.dynamical_matrix, inside))
+
+
 def direct(model: PairModel, particles: Particles) -> Dynamics:
     """Return Φ(q) by direct and Ewald sums, with no supercell: the independent check."""
     return lambda q: force_constants_at(model, particles, q)

@@ -73,9 +73,7 @@ def freedom_of(model: PairModel, crystal: Crystal) -> Freedom:
     owners = np.array([i for i, s in enumerate(crystal.symbols) if s in polarisable], dtype=np.int64)
     shells = np.zeros((0, len(owners), 3))
     if len(owners):
-        fields = invariant_fields(
-            crystal.lattice, crystal.fractional, crystal.rotations, crystal.translations
-        )
+        fields = invariant_fields(crystal.lattice, crystal.fractional, crystal.rotations, crystal.translations)
         flat = fields[:, owners].reshape(len(fields), 3 * len(owners))
         if len(flat):
             _, sizes, rows = np.linalg.svd(flat, full_matrices=False)

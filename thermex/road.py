@@ -162,9 +162,7 @@ def _solve(lattice: Lattice, branch: Branch, load: Load, wanted: Array, accuracy
         solution = convergence.solve(surface, load, wanted, start, _mesh_share(branch))
         error = solution.error
         finer_mesh = judged.any() and error.mesh[judged].max() > 0.5 * accuracy and mesh + 1 < len(MESHES)
-        more_volumes = (
-            judged.any() and error.volumes[judged].max() > 0.5 * accuracy and volumes + 1 < len(VOLUMES)
-        )
+        more_volumes = judged.any() and error.volumes[judged].max() > 0.5 * accuracy and volumes + 1 < len(VOLUMES)
         if not (finer_mesh or more_volumes):
             break
         mesh, volumes = mesh + int(finer_mesh), volumes + int(more_volumes)

@@ -19,7 +19,7 @@ from thermex.convergence import Solution
 from thermex.equilibrium import Load, refine
 from thermex.errors import BranchEndError, UnstableCrystalError
 from thermex.free_energy import FreeEnergy, Vibrations
-from thermex.general_lattice import GeneralLattice
+from thermex.lattice import BoxLattice
 from thermex.mesh import divisions_for, graded, stability_probes
 from thermex.road import Progress, Travelled
 
@@ -68,9 +68,7 @@ def follow(surface: FreeEnergy, load: Load, temperature: Array, start: Array) ->
     return Path(temperature, np.array(found), False)
 
 
-def tour(
-    lattice: GeneralLattice, load: Load, temperature: Array, accuracy: float, progress: Progress
-) -> Travelled:
+def tour(lattice: BoxLattice, load: Load, temperature: Array, accuracy: float, progress: Progress) -> Travelled:
     """Find states at the temperatures asked for, converged to the accuracy asked for.
 
     Raises
@@ -117,7 +115,7 @@ def tour(
     )
 
 
-def _search(lattice: GeneralLattice, load: Load, highest: float) -> tuple[Box, Path, str]:
+def _search(lattice: BoxLattice, load: Load, highest: float) -> tuple[Box, Path, str]:
     """Move and stretch a coarse box until the path lies inside it."""
     d = len(load.trace)
     window = np.tile(np.array(FIRST_WINDOW), (d, 1))
@@ -177,7 +175,7 @@ def _tight(x: Array) -> Array:
     return np.column_stack([low - margin, high + margin])
 
 
-def meshes_for(lattice: GeneralLattice, accuracy: float) -> tuple[int, ...]:
+def meshes_for(lattice: BoxLattice, accuracy: float) -> tuple[int, ...]:
     """Return the meshes tried one after the other: coarser for large cells, whose zone is small."""
     if lattice.crystal.size > 40:
         return (4, 6)
@@ -186,9 +184,7 @@ def meshes_for(lattice: GeneralLattice, accuracy: float) -> tuple[int, ...]:
     return (10, 12, 16) if accuracy > 2e-3 else (12, 16)
 
 
-def _final(
-    lattice: GeneralLattice, box: Box, load: Load, wanted: Array, path: Path, accuracy: float
-) -> Solution:
+def _final(lattice: BoxLattice, box: Box, load: Load, wanted: Array, path: Path, accuracy: float) -> Solution:
     """Compute phonons at the points of the final box, refining the mesh to the accuracy asked for."""
     d = len(load.trace)
     start = np.column_stack([np.interp(wanted, path.temperature, path.x[:, k]) for k in range(d)])

@@ -27,9 +27,7 @@ def static_path(travelled: Travelled, log_volume: Array, static: Slice) -> Array
     for _ in range(30):
         values = static(x)
         # stationary in the directions that keep ln V: slope + λ t = 0
-        inverse_trace = np.linalg.solve(values.curvature, np.broadcast_to(trace[:, None], (*x.shape, 1)))[
-            ..., 0
-        ]
+        inverse_trace = np.linalg.solve(values.curvature, np.broadcast_to(trace[:, None], (*x.shape, 1)))[..., 0]
         inverse_slope = np.linalg.solve(values.curvature, values.slope[..., None])[..., 0]
         error = x @ trace - log_volume
         multiplier = (error - inverse_slope @ trace) / (inverse_trace @ trace)

@@ -15,7 +15,7 @@ from thermex.anharmonic.sampled_term import Points, SampledFit, fit
 from thermex.anharmonic.supercell import conventional_crystal, supercell_bonds
 from thermex.anharmonic.term import AnharmonicTerm, term_through
 from thermex.anharmonic.vertices import BareBonds, bare_bonds
-from thermex.anharmonic.walkers import WARMING, Cell, cell_at, run, start
+from thermex.anharmonic.walkers import WARMING, Cell, at_rest, cell_at, run
 from thermex.chebyshev import Box
 from thermex.crystal.crystal import Crystal
 from thermex.free_energy import Term
@@ -115,7 +115,7 @@ class Block:
     cell: Cell
     kelvin: float
     y: Array | None
-    """Where the walkers stand; None to start from the harmonic crystal."""
+    """Where the walkers stand; None to start from rest."""
     seed: tuple[int, ...]
 
 
@@ -134,7 +134,7 @@ def work(block: Block) -> Outcome:
     random = np.random.default_rng(np.random.SeedSequence(block.seed))
     y = block.y
     if y is None:
-        y = run(block.cell, block.kelvin, start(block.cell, block.kelvin, PAIRS, random), WARMING, random).y
+        y = run(block.cell, block.kelvin, at_rest(block.cell, PAIRS), WARMING, random).y
     seen = run(block.cell, block.kelvin, y, TRAJECTORIES, random)
     return Outcome(seen.mapped_force, seen.mapped_energy, seen.accepted, seen.y)
 
@@ -202,8 +202,9 @@ def sample(
     first = runs.at(x).extended(mapper)
     x = outlook.strain(fit(first.points(), leading.best).best, temperature)
     series = runs.at(np.clip(x, *leading.best.box.window[0]), first)
-    error, interrupted = float("inf"), False
-    while series.blocks < MOST and (series.blocks < FEWEST or error > plan.goal):
+    error, pure, interrupted = float("inf"), float("inf"), False
+    # more blocks do not help once what is left is the misfit of a smooth curve
+    while series.blocks < MOST and (series.blocks < FEWEST or (error > plan.goal and pure > plan.goal / 3.0)):
         try:
             series = series.extended(mapper)
         except KeyboardInterrupt:
@@ -212,7 +213,9 @@ def sample(
             interrupted = True
             break
         if series.blocks >= FEWEST:
-            error = outlook.error(fit(series.points(), leading.best))
+            trial = fit(series.points(), leading.best)
+            error = outlook.error(trial)
+            pure = error / max(trial.misfit, 1.0)
         progress("sampling", series.blocks, _expected(series.blocks, error, plan.goal))
     points = series.points()
     return Sampled(

@@ -24,8 +24,8 @@ Array = NDArray[np.float64]
 #: Kicks in a quarter turn.
 KICKS = 4
 
-#: Trajectories thrown away when walkers start from the harmonic crystal.
-WARMING = 4
+#: Trajectories thrown away when walkers start from rest.
+WARMING = 6
 
 
 @dataclass(frozen=True, slots=True)
@@ -116,10 +116,13 @@ def full_matrix(on_mesh: NDArray[np.complex128]) -> Array:
     return np.asarray(0.5 * (out + out.T))
 
 
-def start(cell: Cell, kelvin: float, pairs: int, random: np.random.Generator) -> Array:
-    """Draw antithetic walkers from the harmonic crystal, shape (modes, 2·pairs)."""
-    half = np.sqrt(BOLTZMANN * kelvin) * random.normal(size=(cell.size, pairs))
-    return np.concatenate([half, -half], axis=1)
+def at_rest(cell: Cell, pairs: int) -> Array:
+    """Return antithetic walkers on their sites, shape (modes, 2·pairs).
+
+    A quarter turn gives every mode its thermal amplitude. Drawn from the harmonic crystal instead,
+    walkers would start inside one another's repulsion at high temperature and take long to leave it.
+    """
+    return np.zeros((cell.size, 2 * pairs))
 
 
 def run(cell: Cell, kelvin: float, y: Array, trajectories: int, random: np.random.Generator) -> Observed:

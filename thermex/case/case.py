@@ -71,6 +71,8 @@ class PotentialSpec:
     citation: str = ""
     provenance: str = ""
     covariance: tuple[tuple[str, ...], tuple[tuple[float, ...], ...]] | None = None
+    calculator: str | None = None
+    """Name of an ASE calculator that thermex constructs, in place of pairs."""
     """Parameter names and their covariance matrix."""
 
 

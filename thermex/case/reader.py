@@ -179,6 +179,11 @@ def _potential(walker: Walker, value: object, folder: Path) -> PotentialSpec:
         else:
             walker.fault("potential.covariance", "has no square matrix for its parameters", "give both")
     spec = PotentialSpec(found.get("charges", {}), pairs, shells, covariance=covariance)
+    if "calculator" in found:
+        if pairs or shells or spec.charges or "published" in found:
+            walker.fault("potential.calculator", "stands beside pairs or charges", "keep one of the two")
+        name = found["calculator"]
+        return replace(spec, calculator=name, citation=f"the {name} calculator of ASE")
     if "published" not in found:
         if not pairs and "pair" not in content:
             walker.fault("potential.pair", "is missing", "give at least one pair, or published")
@@ -227,7 +232,7 @@ def _checked(walker: Walker, crystal: CrystalSpec, potential: PotentialSpec) -> 
     """Check the potential against what sits in the crystal."""
     from thermex.crystal.prototypes import site_counts
 
-    if crystal.prototype is None:
+    if crystal.prototype is None or potential.calculator:
         return potential
     present = dict.fromkeys(crystal.sites)
     for k, pair in enumerate(potential.pairs):

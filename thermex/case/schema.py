@@ -87,6 +87,14 @@ TABLES: tuple[Table, ...] = (
         (
             Key("published", "text", "", "", "name of a shipped potential; in its place: pairs of your own"),
             Key("charges", "numbers by name", "e", "0", "charge of each ion, shell included"),
+            Key(
+                "calculator",
+                "text",
+                "",
+                "",
+                "a force source of ASE in place of pairs",
+                allowed=("effective medium",),
+            ),
         ),
         ("pair", "polarisable", "covariance"),
     ),

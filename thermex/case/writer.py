@@ -27,7 +27,7 @@ def case_to_dict(case: Case) -> dict[str, Any]:
         crystal["inner"] = dict(spec.inner)
     if spec.masses:
         crystal["masses"] = dict(spec.masses)
-    potential: dict[str, Any] = {
+    potential: dict[str, Any] = {"calculator": case.potential.calculator} if case.potential.calculator else {
         "charges": dict(case.potential.charges),
         "pair": [_pair(p) for p in case.potential.pairs],
     }
