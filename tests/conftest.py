@@ -1,0 +1,5 @@
+"""What all tests share: no display, one compute thread."""
+
+import os
+
+os.environ.setdefault("MPLBACKEND", "Agg")
