@@ -182,14 +182,14 @@ def test_term_is_exactly_quadratic_in_temperature_with_consistent_derivatives() 
     x = np.full((2, 1), 0.013)
     values = term.at(t)(x)
     assert values.energy[1] == pytest.approx(4.0 * values.energy[0], rel=1e-14)
-    np.testing.assert_allclose(values.heat, t * values.entropy, rtol=1e-14)
     h, dt = 1e-4, 1e-3
     up, down = term.at(t)(x + h), term.at(t)(x - h)
     np.testing.assert_allclose(values.slope[:, 0], (up.energy - down.energy) / (2 * h), rtol=1e-5)
     np.testing.assert_allclose(values.curvature[:, 0, 0], (up.slope - down.slope)[:, 0] / (2 * h), rtol=1e-5)
     np.testing.assert_allclose(values.entropy_slope[:, 0], (up.entropy - down.entropy) / (2 * h), rtol=1e-5)
-    warmer = term.at(t + dt)(x)
-    np.testing.assert_allclose(values.entropy, -(warmer.energy - values.energy) / dt, rtol=1e-3)
+    warmer, colder = term.at(t + dt)(x), term.at(t - dt)(x)
+    np.testing.assert_allclose(values.entropy, -(warmer.energy - colder.energy) / (2 * dt), rtol=1e-6)
+    np.testing.assert_allclose(values.heat, t * (warmer.entropy - colder.entropy) / (2 * dt), rtol=1e-6)
     f2 = term.value(np.array([0.013]))[0][0]
     assert values.energy[0] == pytest.approx((BOLTZMANN * 20.0) ** 2 * f2)
 

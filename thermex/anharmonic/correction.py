@@ -1,4 +1,4 @@
-"""The equilibrium with an anharmonic term in the free energy: α, a, B_T, γ and C_P without the approximation."""
+"""The equilibrium with an anharmonic term in the free energy: α, a, B_T, γ and C_P."""
 
 from __future__ import annotations
 
@@ -124,7 +124,9 @@ def _solved(base: Quasiharmonic, source: Source, warm: Mask) -> tuple[States, Ar
         error = replace(solution.error, supercell=base.supercell_error[warm])
         total = error.total**2
         for companion in source.companions:
-            moved = solved_states(base.surface.best.plus(companion), base.load, temperature, solution.states.x)
+            moved = solved_states(
+                base.surface.best.plus(companion), base.load, temperature, solution.states.x
+            )
             total += convergence.relative(moved, solution.states) ** 2
     good = minimum(surface.best, base.load, solution.states, base.surface.box.window)
     return solution.states, np.sqrt(total), good
@@ -173,7 +175,7 @@ def _found_notes(base: Quasiharmonic, alpha: Array, extrapolated: float) -> tupl
     beyond = np.isfinite(alpha) & (base.temperature > extrapolated)
     if beyond.any():
         notes.append(
-            f"Above {extrapolated:.0f} K (T_eff/T_end = {TESTED_TO}) the leading-order correction is extrapolated: "
-            "it was tested to 6 % of α below, and falls 20 % short at T_eff/T_end = 0.73."
+            f"Above {extrapolated:.0f} K (T_eff/T_end = {TESTED_TO}) the leading-order correction is "
+            "extrapolated: it was tested to 6 % of α below, and falls 20 % short at T_eff/T_end = 0.73."
         )
     return tuple(notes)

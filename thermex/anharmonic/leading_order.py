@@ -170,7 +170,8 @@ def folded_cubic(bare: BareBonds, tensors: Array, size: int, repeat: tuple[int, 
     own = np.stack([np.bincount(bonds.first, rows[:, k], minlength=size) for k in range(27)])
     blocks = out.reshape(3, 3, 3, *shape)
     for i in range(size):
-        blocks[:, :, :, i, i, 0, 0, 0] -= own[:, i].reshape(3, 3, 3) / 3.0
+        rest: Array = blocks[:, :, :, i, i, 0, 0, 0]
+        blocks[:, :, :, i, i, 0, 0, 0] = rest - own[:, i].reshape(3, 3, 3) / 3.0
     return np.ascontiguousarray(blocks.transpose(3, 0, 1, 4, 2, 5, 6, 7))
 
 

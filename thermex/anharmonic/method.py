@@ -1,4 +1,4 @@
-"""The error of the quasi-harmonic method for one prediction: the rule, and the correction that was asked for."""
+"""The error of the quasi-harmonic method for one prediction: the rule, and the correction asked for."""
 
 from __future__ import annotations
 
@@ -11,8 +11,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from thermex import convergence
-from thermex.anharmonic.correction import Quasiharmonic, correct, minimum, solved_states
-from thermex.anharmonic.leading_order import LeadingOrder, applicable, leading_order
+from thermex.anharmonic.correction import COLDEST, Quasiharmonic, correct, minimum, solved_states
+from thermex.anharmonic.leading_order import applicable, leading_order
 from thermex.anharmonic.rule import anharmonic_rule
 from thermex.anharmonic.sampled_term import SampledFit
 from thermex.anharmonic.sampling import Outlook, Plan, Sampled, sample
@@ -30,6 +30,9 @@ Progress = Callable[[str, int, int], None]
 
 #: Sampling goes this far above the highest temperature asked for, so that α there is no edge of a fit.
 MARGIN = 1.05
+
+#: The error aimed at is judged up to this multiple of T_end; it is stated above it too.
+JUDGED = 0.95
 
 #: Above this multiple of T_end nothing is sampled.
 HIGHEST = 1.25
@@ -100,9 +103,7 @@ def method_error(
     return Method(rule, correct(base, found, "leading order"), ())
 
 
-def quasiharmonic(
-    travelled: Travelled, asked: Array, effective_K: Array, debye_K: float
-) -> Quasiharmonic:
+def quasiharmonic(travelled: Travelled, asked: Array, effective_K: Array, debye_K: float) -> Quasiharmonic:
     """Gather what the correction needs at the temperatures asked for."""
     states = travelled.solution.states
     end = travelled.end_K if travelled.ends else float("inf")
@@ -139,7 +140,7 @@ def sampled(
     leading = leading_order(model, base.crystal, base.surface.box.window)
     highest = min(MARGIN * float(base.temperature.max()), HIGHEST * base.end_K)
     plan = Plan(highest, accuracy.sampled_error, accuracy.seed)
-    outlook = outlook_on(base, leading, highest)
+    outlook = outlook_on(base, highest)
     if executor is not None:
         found = sample(model, base.crystal, leading, outlook, plan, progress, executor.map)
     else:
@@ -158,27 +159,25 @@ def _with_room(base: Quasiharmonic, travelled: Travelled) -> Quasiharmonic:
     return replace(base, surface=convergence.build(travelled.lattice, box, divisions, 1))
 
 
-def outlook_on(base: Quasiharmonic, leading: LeadingOrder, highest: float) -> Outlook:
+def outlook_on(base: Quasiharmonic, highest: float) -> Outlook:
     """Return where the minimum lies with a given term, and the error of α that a fit leaves."""
-    judged = base.temperature[
-        (base.temperature >= 0.25 * base.debye_K) & (base.temperature <= highest) & (base.temperature > 0.0)
-    ]
-    steps = highest * np.linspace(0.02, 1.0, 50)
+    top = min(highest, JUDGED * base.end_K)
+    judged = base.temperature[(base.temperature >= COLDEST * base.debye_K) & (base.temperature <= top)]
+    if not len(judged):
+        judged = np.array([min(top, float(base.temperature.max()))])
     low, high = base.surface.box.window[0]
 
     def strain(term: Term, temperature: Array) -> Array:
-        """Follow the minimum upward from the lowest temperature."""
+        """Find the minima, each from the quasi-harmonic one; where there is none take the nearest in T."""
         whole = base.surface.best.plus(term)
-        x, path = np.full((1, 1), base.x[0, 0]), []
-        for kelvin in steps:
-            found = solved_states(whole, base.load, np.array([kelvin]), x)
-            if not minimum(whole, base.load, found, base.surface.box.window)[0]:
-                break
-            x = found.x
-            path.append(float(x[0, 0]))
-        if not path:
-            raise UnstableCrystalError("no minimum of the free energy was found", where="sampled anharmonicity")
-        return np.clip(np.interp(temperature, steps[: len(path)], path), low, high)
+        begin = np.interp(temperature, base.temperature, base.x[:, 0])[:, None]
+        found = solved_states(whole, base.load, temperature, begin)
+        good = minimum(whole, base.load, found, base.surface.box.window)
+        if not good.any():
+            raise UnstableCrystalError(
+                "no minimum of the free energy was found", where="sampled anharmonicity"
+            )
+        return np.clip(np.interp(temperature, temperature[good], found.x[good, 0]), low, high))
 
     def error(fit: SampledFit) -> float:
         whole = base.surface.best

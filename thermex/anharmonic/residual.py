@@ -149,9 +149,13 @@ def residual_at(bare: BareBonds, size: int, x: float) -> Residual:
         groups.append((slice(start, start + len(part)), terms))
         start += len(part)
     index = np.concatenate(kept)
-    bonds = Bonds(np.concatenate(first), np.concatenate(second), bare.bonds.cell[index], bare.bonds.vector[index])
+    bonds = Bonds(
+        np.concatenate(first), np.concatenate(second), bare.bonds.cell[index], bare.bonds.vector[index]
+    )
     scale = float(np.exp(x))
-    taylor, slope = _taylor(BareBonds(bonds, tuple((np.arange(g.start, g.stop), t) for g, t in groups)), scale)
+    taylor, slope = _taylor(
+        BareBonds(bonds, tuple((np.arange(g.start, g.stop), t) for g, t in groups)), scale
+    )
     pairs = np.arange(start)
     ones = np.ones(start)
     incidence = csr_matrix((ones, (bonds.second, pairs)), shape=(size, start)) - csr_matrix(

@@ -21,6 +21,10 @@ from thermex.errors import UnstableCrystalError
 
 Array = NDArray[np.float64]
 
+#: Walkers may not leave the perfect crystal: no atom goes farther from its site than this many
+#: nearest-neighbour distances (an interstitial site lies at 0.7 in fcc, at 0.87 in rock salt).
+WALL = 0.6
+
 #: Kicks in a quarter turn.
 KICKS = 4
 
@@ -39,11 +43,13 @@ class Cell:
     """Shape (3·atoms, 3·atoms): ½ dΦ/dx, eV/Å², Φ of the displacements at the static scale."""
     mapping: Array
     """Shape (3·atoms, 3·atoms): A = Φ⁻¹ ½ dΦ/dx; w → −A w follows the harmonic crystal in x."""
+    wall: float
+    """Å at the static scale: an atom never goes farther than this from its site."""
 
     @property
     def size(self) -> int:
         """Number of modes."""
-        return self.modes.shape[1]
+        return int(self.modes.shape[1])
 
     def displacements(self, y: Array) -> Array:
         """Return w (3, atoms, walkers) of normal coordinates (modes, walkers)."""
@@ -92,13 +98,14 @@ def cell_at(periodic: PeriodicCrystal, bare: BareBonds, x: float) -> Cell:
     values, vectors = np.linalg.eigh(stiffness)
     if values[3] < 1e-8 * values[-1] or values[0] < -1e-6 * values[-1]:
         raise UnstableCrystalError(
-            f"phonons of the sampled supercell are imaginary at {100.0 * np.expm1(x):+.2f} % in the lattice parameter",
+            f"phonons of the supercell are imaginary at {100.0 * np.expm1(x):+.2f} % in the lattice parameter",
             where="sampled anharmonicity",
             fix="sampling needs a stable harmonic crystal at every volume on the way",
         )
     modes = vectors[:, 3:] / np.sqrt(values[3:])
     size = len(stiffness) // 3
-    return Cell(residual_at(bare, size, x), modes, 0.5 * slope, modes @ (modes.T @ (0.5 * slope)))
+    wall = WALL * float(bare.bonds.length.min())
+    return Cell(residual_at(bare, size, x), modes, 0.5 * slope, modes @ (modes.T @ (0.5 * slope)), wall)
 
 
 def full_matrix(on_mesh: NDArray[np.complex128]) -> Array:
@@ -139,7 +146,7 @@ def run(cell: Cell, kelvin: float, y: Array, trajectories: int, random: np.rando
         momentum = np.concatenate([half, -half], axis=1)
         dice = np.tile(np.log(random.uniform(size=pairs)), 2)
         new_y, new_energy, new_gradient, rise = _turned(cell, y, momentum, energy, gradient)
-        accept = dice < -rise / kt
+        accept = (dice < -rise / kt) & _inside(cell, new_y)
         y = np.where(accept, new_y, y)
         energy, gradient = np.where(accept, new_energy, energy), np.where(accept, new_gradient, gradient)
         taken += int(accept.sum())
@@ -162,6 +169,12 @@ def _turned(
         momentum -= 0.5 * step * gradient
     after = energy + 0.5 * (y**2).sum(axis=0) + 0.5 * (momentum**2).sum(axis=0)
     return y, energy, gradient, after - before
+
+
+def _inside(cell: Cell, y: Array) -> NDArray[np.bool_]:
+    """Return which walkers have every atom near its site."""
+    far = (cell.displacements(y) ** 2).sum(axis=0).max(axis=0)
+    return np.asarray(far < cell.wall**2)
 
 
 def _measured(cell: Cell, kt: float, y: Array, energy: Array, gradient: Array) -> Array:
