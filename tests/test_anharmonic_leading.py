@@ -121,9 +121,7 @@ def test_equals_the_sum_over_pairs_of_bonds() -> None:
         own = 2.0 * between(np.zeros(3, int)) - between(cells[b]) - between(-cells[b])
         quartic += (
             0.5
-            * quartic_mean(
-                bare.bonds.vector[b : b + 1], g2[b : b + 1], g3[b : b + 1], g4[b : b + 1], own[None]
-            ).sum()
+            * quartic_mean(bare.bonds.vector[b : b + 1], g2[b : b + 1], g3[b : b + 1], g4[b : b + 1], own[None]).sum()
         )
         for c in range(len(cells)):
             for home in commensurate_points((2, 2, 2)):

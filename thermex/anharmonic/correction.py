@@ -124,9 +124,7 @@ def _solved(base: Quasiharmonic, source: Source, warm: Mask) -> tuple[States, Ar
         error = replace(solution.error, supercell=base.supercell_error[warm])
         total = error.total**2
         for companion in source.companions:
-            moved = solved_states(
-                base.surface.best.plus(companion), base.load, temperature, solution.states.x
-            )
+            moved = solved_states(base.surface.best.plus(companion), base.load, temperature, solution.states.x)
             total += convergence.relative(moved, solution.states) ** 2
     good = minimum(surface.best, base.load, solution.states, base.surface.box.window)
     return solution.states, np.sqrt(total), good

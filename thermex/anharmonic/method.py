@@ -174,10 +174,8 @@ def outlook_on(base: Quasiharmonic, highest: float) -> Outlook:
         found = solved_states(whole, base.load, temperature, begin)
         good = minimum(whole, base.load, found, base.surface.box.window)
         if not good.any():
-            raise UnstableCrystalError(
-                "no minimum of the free energy was found", where="sampled anharmonicity"
-            )
-        return np.clip(np.interp(temperature, temperature[good], found.x[good, 0]), low, high))
+            raise UnstableCrystalError("no minimum of the free energy was found", where="sampled anharmonicity")
+        return np.asarray(np.clip(np.interp(temperature, temperature[good], found.x[good, 0]), low, high))
 
     def error(fit: SampledFit) -> float:
         whole = base.surface.best

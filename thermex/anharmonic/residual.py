@@ -149,13 +149,9 @@ def residual_at(bare: BareBonds, size: int, x: float) -> Residual:
         groups.append((slice(start, start + len(part)), terms))
         start += len(part)
     index = np.concatenate(kept)
-    bonds = Bonds(
-        np.concatenate(first), np.concatenate(second), bare.bonds.cell[index], bare.bonds.vector[index]
-    )
+    bonds = Bonds(np.concatenate(first), np.concatenate(second), bare.bonds.cell[index], bare.bonds.vector[index])
     scale = float(np.exp(x))
-    taylor, slope = _taylor(
-        BareBonds(bonds, tuple((np.arange(g.start, g.stop), t) for g, t in groups)), scale
-    )
+    taylor, slope = _taylor(BareBonds(bonds, tuple((np.arange(g.start, g.stop), t) for g, t in groups)), scale)
     pairs = np.arange(start)
     ones = np.ones(start)
     incidence = csr_matrix((ones, (bonds.second, pairs)), shape=(size, start)) - csr_matrix(
@@ -194,7 +190,5 @@ def _taylor(bare: BareBonds, scale: float) -> tuple[Array, Array]:
     r = bare.bonds.length * scale
     g1, g2, g3, _ = radial_factors(derivatives, r)
     values = np.stack([derivatives[0], scale**2 * g1, scale**4 * g2])
-    slopes = np.stack(
-        [r * derivatives[1], scale**2 * (2.0 * g1 + r**2 * g2), scale**4 * (4.0 * g2 + r**2 * g3)]
-    )
+    slopes = np.stack([r * derivatives[1], scale**2 * (2.0 * g1 + r**2 * g2), scale**4 * (4.0 * g2 + r**2 * g3)])
     return values[:, :, None], slopes[:, :, None]

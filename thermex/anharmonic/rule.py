@@ -24,9 +24,7 @@ WORDS = (
     "axial crystals."
 )
 
-WORDS_WITHOUT_END = (
-    "No rule: the end of the quasi-harmonic branch was not reached, so t = T_eff/T_end is not known."
-)
+WORDS_WITHOUT_END = "No rule: the end of the quasi-harmonic branch was not reached, so t = T_eff/T_end is not known."
 
 
 def overestimate(t: Array, factor: float = FACTOR) -> Array:

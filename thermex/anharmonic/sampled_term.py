@@ -39,9 +39,7 @@ class SampledTerm:
     def at(self, temperature: Array) -> Slice:
         """Fix the temperatures (nT,), K; see :class:`thermex.free_energy.Term`."""
         t = temperature
-        ratio, tilt, offset = (
-            [p(t), p.deriv(1)(t), p.deriv(2)(t)] for p in (self.ratio, self.tilt, self.offset)
-        )
+        ratio, tilt, offset = ([p(t), p.deriv(1)(t), p.deriv(2)(t)] for p in (self.ratio, self.tilt, self.offset))
 
         def evaluate(x: Array) -> TermValues:
             f, f_x, f_xx = self.leading.value(x[:, 0])

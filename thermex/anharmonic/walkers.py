@@ -155,9 +155,7 @@ def run(cell: Cell, kelvin: float, y: Array, trajectories: int, random: np.rando
     return Observed(means[0], means[1], means[2], taken / (2 * pairs * trajectories), y)
 
 
-def _turned(
-    cell: Cell, y: Array, momentum: Array, energy: Array, gradient: Array
-) -> tuple[Array, Array, Array, Array]:
+def _turned(cell: Cell, y: Array, momentum: Array, energy: Array, gradient: Array) -> tuple[Array, Array, Array, Array]:
     """Follow a quarter turn: return the new y, U_res, gradient and the change of the whole energy."""
     step = 0.5 * np.pi / KICKS
     cosine, sine = np.cos(step), np.sin(step)
