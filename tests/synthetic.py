@@ -130,6 +130,7 @@ def invented_prediction(
         static=_static(crystal),
         temperature_K=kelvin,
         lattice_A={"a": length},
+        fractional=np.repeat(np.array([[[0.0, 0, 0], [0.5, 0.5, 0.5]]]), len(kelvin), axis=0),
         volume_A3=length**3 / 4.0,
         alpha_volume_per_K=3.0 * alpha,
         alpha_axis_per_K={"a": alpha},

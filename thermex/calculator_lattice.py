@@ -61,6 +61,10 @@ class CalculatorLattice:
         rows = [energy_and_slope(self.relaxed(x), self.calculator) for x in dense.grid]
         return fitted_energy(dense, [(u, slope, None) for u, slope in rows])
 
+    def fractional_at(self, x: Array) -> Array:
+        """Return the fractional positions (n, 3) at strain x, relaxed."""
+        return self.relaxed(x).fractional
+
     def motion(self, points: Array) -> Motion:
         """Return the dynamical matrices from displaced supercells."""
         return self._motion(points, self.supercells.short)

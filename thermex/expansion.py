@@ -204,6 +204,7 @@ def assemble(
         static=static,
         temperature_K=asked,
         lattice_A={n: spread(lattice[:, k]) for k, n in enumerate(names)},
+        fractional=spread(positions_along(travelled)),
         volume_A3=spread(states.volume),
         alpha_volume_per_K=spread(states.alpha_volume),
         alpha_axis_per_K={n: spread(states.alpha_axis[:, k]) for k, n in enumerate(names)},
@@ -241,6 +242,23 @@ def assemble(
         anharmonic=method.anharmonic,
         notes=(*_notes(case, model, static, travelled), *method.notes),
     )
+
+
+def positions_along(travelled: Travelled) -> Array:
+    """Return fractional positions at every state, shape (nT, n, 3).
+
+    Inner coordinates are relaxed at the coldest and the hottest cell and run straight in ln V between.
+    """
+    states = travelled.solution.states
+    crystal = travelled.lattice.crystal
+    if not len(crystal.displacements):
+        return np.repeat(crystal.fractional[None], len(states.x), axis=0)
+    log_volume = states.x @ travelled.load.trace
+    rows = int(np.argmin(log_volume)), int(np.argmax(log_volume))
+    low, high = (travelled.lattice.fractional_at(states.x[k]) for k in rows)
+    span = log_volume[rows[1]] - log_volume[rows[0]]
+    share = (log_volume - log_volume[rows[0]]) / (span if span > 0.0 else 1.0)
+    return np.asarray(low[None] + share[:, None, None] * (high - low)[None])
 
 
 def _spread_error(error: NumericalError, spread: object) -> NumericalError:

@@ -67,6 +67,10 @@ class GeneralLattice:
         rows = [strain_derivatives(self.relaxed(x)[1]) for x in box.grid]
         return fitted_energy(box, rows)
 
+    def fractional_at(self, x: Array) -> Array:
+        """Return the fractional positions (n, 3) at strain x, relaxed."""
+        return self.relaxed(x)[0].crystal.fractional
+
     def motion(self, points: Array) -> Motion:
         """Return the dynamical matrices through phonopy, a supercell at every strain."""
         weighting = MassWeighting(self.crystal.masses)

@@ -44,6 +44,10 @@ class Lattice(Protocol):
         """The static energy as a term of the free energy, good over a box of strains."""
         ...
 
+    def fractional_at(self, x: Array) -> Array:
+        """Return the fractional positions (n, 3) at strain x."""
+        ...
+
     def motion(self, points: Array) -> Motion:
         """Return the dynamical matrices at wave vectors (nq, 3) as a function of x, by phonopy."""
         ...
@@ -118,6 +122,11 @@ class UniformLattice:
         """The static energy, exact everywhere."""
         del box
         return self.energy
+
+    def fractional_at(self, x: Array) -> Array:
+        """Return the fractional positions, fixed by symmetry."""
+        del x
+        return self.crystal.fractional
 
     def motion(self, points: Array) -> Motion:
         """Return the dynamical matrices through phonopy; see :class:`Lattice`."""

@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
-from typing import TYPE_CHECKING
+from dataclasses import dataclass, field, replace
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from thermex.crystal.crystal import Crystal
+from thermex.errors import InputError
 
 if TYPE_CHECKING:
     from thermex.case.case import Case
@@ -174,6 +175,8 @@ class Prediction:
     static: StaticLattice
     temperature_K: Array
     lattice_A: Mapping[str, Array]
+    fractional: Array
+    """Shape (nT, n, 3): positions in the primitive cell; inner coordinates follow the static forces."""
     volume_A3: Array
     alpha_volume_per_K: Array
     """Instantaneous volume coefficient (1/V)(dV/dT)_P."""
@@ -229,6 +232,28 @@ class Prediction:
     anharmonic: Anharmonic | None
     notes: tuple[str, ...]
     """What the reader must know: warnings, conventions, what was left out; one sentence each."""
+
+    def structure(self, temperature_K: float) -> Any:
+        """Return the predicted primitive cell at one temperature as ASE Atoms.
+
+        Raises
+        ------
+        InputError
+            The temperature lies outside the range predicted.
+        """
+        from thermex.crystal.structure import to_atoms
+
+        lengths = [self.at(self.lattice_A[name], temperature_K) for name in self.crystal.axis_names]
+        if not np.isfinite(lengths).all():
+            raise InputError(
+                f"{temperature_K:g} K lies outside the prediction", where="structure", fix="ask within its range"
+            )
+        x = np.log(np.array(lengths) / self.crystal.lattice_parameters)
+        good = np.isfinite(self.volume_A3)
+        flat = self.fractional[good].reshape(int(good.sum()), -1)
+        places = [float(np.interp(temperature_K, self.temperature_K[good], column)) for column in flat.T]
+        cell = replace(self.crystal.strained(x), fractional=np.array(places).reshape(-1, 3))
+        return to_atoms(cell)
 
     def at(self, values: Array, temperature_K: float) -> float:
         """Interpolate an array of this prediction at one temperature (cubic in T, NaN outside)."""

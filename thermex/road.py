@@ -98,7 +98,7 @@ def travel(
         progress("supercell", 3, 4)
         excess = convergence.supercell_error(lattice, solution, load, 6, 3)
         solution = replace(solution, error=replace(solution.error, supercell=excess))
-        limit = np.where(_judged(wanted, branch), 0.5 * accuracy, 1.5 * accuracy)
+        limit = np.where(_judged(wanted, branch), 0.5 * accuracy, 0.7 * accuracy)
         coldest = convergence.highest_phonon_K(solution.surface.frequencies) / 100.0
         exempt = (branch.ends & (wanted > JUDGED * branch.end_K)) | (wanted < coldest)
         if attempt == ATTEMPTS - 1 or (exempt | (excess <= limit)).all():

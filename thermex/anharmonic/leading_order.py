@@ -166,12 +166,11 @@ def folded_cubic(bare: BareBonds, tensors: Array, size: int, repeat: tuple[int, 
     flat = np.ravel_multi_index((bonds.first, bonds.second, *(bonds.cell % np.array(repeat)).T), shape)
     total = int(np.prod(shape))
     rows = tensors.reshape(-1, 27)
-    out = np.stack([np.bincount(flat, rows[:, k], minlength=total) for k in range(27)])
+    out: Array = np.stack([np.bincount(flat, rows[:, k], minlength=total) for k in range(27)])
     own = np.stack([np.bincount(bonds.first, rows[:, k], minlength=size) for k in range(27)])
-    blocks = out.reshape(3, 3, 3, *shape)
+    blocks: Array = out.reshape(3, 3, 3, *shape)
     for i in range(size):
-        rest: Array = blocks[:, :, :, i, i, 0, 0, 0]
-        blocks[:, :, :, i, i, 0, 0, 0] = rest - own[:, i].reshape(3, 3, 3) / 3.0
+        blocks[:, :, :, i, i, 0, 0, 0] = blocks[:, :, :, i, i, 0, 0, 0] - own[:, i].reshape(3, 3, 3) / 3.0
     return np.ascontiguousarray(blocks.transpose(3, 0, 1, 4, 2, 5, 6, 7))
 
 

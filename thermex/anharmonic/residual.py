@@ -85,7 +85,7 @@ class Residual:
 
     def strain_slope(self, w: Array) -> Array:
         """Return ∂U_res/∂x at fixed w (walkers,), eV."""
-        moved, along, square, _, tension = self.parts(w)
+        _moved, along, square, _, tension = self.parts(w)
         r2 = (2.0 * along + square + self.squared) * self.scale**2
         slope0, g1, g2 = self.taylor_slope
         total = (tension * r2).sum(axis=0) - slope0.sum()

@@ -21,7 +21,7 @@ def conventional_crystal(crystal: Crystal) -> Crystal:
     enough for lattice sums, not for symmetry analysis.
     """
     cell = crystal.conventional @ crystal.lattice
-    multiple = int(round(abs(float(np.linalg.det(crystal.conventional)))))
+    multiple = round(abs(float(np.linalg.det(crystal.conventional))))
     reach = np.arange(-3, 4)
     shifts = np.stack(np.meshgrid(reach, reach, reach, indexing="ij"), axis=-1).reshape(-1, 3)
     fractional: list[Array] = []

@@ -76,6 +76,7 @@ def prediction_document(prediction: Prediction, beside: Beside) -> dict[str, Any
     document["zone_centre"] = plain(prediction.zone_centre)
     document["path_alpha_volume_per_K"] = plain(prediction.path_alpha_volume_per_K)
     document |= _beyond(prediction)
+    document["fractional"] = plain(prediction.fractional)
     document["notes"] = list(prediction.notes)
     document["measured"] = measured_document(beside)
     document["modes"] = [_modes(sample) for sample in prediction.modes]

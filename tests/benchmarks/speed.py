@@ -1,0 +1,194 @@
+"""Speed and memory as ratios measured in one run: ``python tests/benchmarks/speed.py [--out FILE]``.
+
+Every figure is a ratio to something measured in the same run, for machines differ and are noisy.
+"""
+
+from __future__ import annotations
+
+import argparse
+import json
+import resource
+import subprocess
+import sys
+import tempfile
+from collections.abc import Callable
+from dataclasses import replace
+from pathlib import Path
+from statistics import median
+from time import perf_counter
+from typing import Any
+
+import numpy as np
+
+HERE = Path(__file__).resolve().parent
+sys.path[:0] = [str(HERE), str(HERE.parent), str(HERE.parent.parent)]
+CASE = HERE.parent.parent / "cases" / "kiln-lining-magnesia.toml"
+IMPORTS = "import numpy, scipy, ase, phonopy"
+PARTS = (
+    "import numpy, scipy.special, scipy.optimize, scipy.interpolate, ase.data, spglib;"
+    "from phonopy import Phonopy"
+)
+REPEATS = 5
+
+
+def child(code: str) -> float:
+    """Return the time that ``code`` takes inside a fresh interpreter, s."""
+    timed = f"import time; t = time.perf_counter(); {code}; print(time.perf_counter() - t)"
+    out = subprocess.run([sys.executable, "-c", timed], capture_output=True, text=True, check=True)
+    return float(out.stdout.split()[-1])
+
+
+def best(measure: Callable[[], float]) -> float:
+    """Return the median of several runs."""
+    return median(measure() for _ in range(REPEATS))
+
+
+def plain_case() -> Any:
+    """Return rigid-ion MgO, 0–2000 K at 0.1 %, without the anharmonic correction."""
+    from thermex.case.reader import load_case
+
+    case = load_case(CASE)
+    return replace(case, accuracy=replace(case.accuracy, anharmonic="none"))
+
+
+def computing(case: Any) -> float:
+    """Return the time of one prediction with everything imported, s."""
+    from thermex.expansion import predict
+
+    start = perf_counter()
+    predict(case)
+    return perf_counter() - start
+
+
+def whole_process(extra: list[str]) -> float:
+    """Return the time of the command line from start to exit, s."""
+    start = perf_counter()
+    subprocess.run([sys.executable, "-m", "thermex", "predict", str(CASE), *extra], capture_output=True, check=True)
+    return perf_counter() - start
+
+
+def peak_memory() -> float:
+    """Return the peak resident memory of one whole process, MB."""
+    code = (
+        "import resource, subprocess, sys;"
+        f"subprocess.run([sys.executable, '-m', 'thermex', 'predict', {str(CASE)!r}], capture_output=True, check=True);"
+        "print(resource.getrusage(resource.RUSAGE_CHILDREN).ru_maxrss / 1024)"
+    )
+    out = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True)
+    return float(out.stdout)
+
+
+def against_handmade() -> dict[str, Any]:
+    """Compare time and accuracy with the hand-made way at the same volumes."""
+    import handmade
+    from reference_models import reference
+
+    from thermex.expansion import predict
+
+    rows = [r for r in reference()["S1"]["table"] if 300 <= r["T"] <= 1500]
+    temperature = np.arange(0.0, 2001.0, 50.0)
+    case = plain_case()
+    prediction = predict(case)
+    window = prediction.effort.strain_window[0]
+    lattice = prediction.static.lattice_A["a"] * np.exp(np.linspace(window[0], window[1], prediction.effort.cells))
+    result = handmade.run(temperature, lattice)
+    errors = {}
+    for row in rows:
+        by_hand = float(np.interp(row["T"], temperature, result.alpha_linear))
+        ours = float(np.interp(row["T"], prediction.temperature_K, prediction.alpha_linear_per_K))
+        errors[f"{row['T']:.0f} K"] = {
+            "hand-made": by_hand / row["alpha_lin"] - 1.0,
+            "thermex": ours / row["alpha_lin"] - 1.0,
+        }
+    ours_seconds = best(lambda: computing(case))
+    return {
+        "hand-made seconds": result.total,
+        "hand-made stages": result.seconds,
+        "thermex seconds": ours_seconds,
+        "ratio": result.total / ours_seconds,
+        "relative error of alpha": errors,
+    }
+
+
+def sweep_of_exponents() -> dict[str, float]:
+    """Compare a sweep of 15 exponents of a rock-salt Born crystal with one prediction."""
+    from thermex.case.reader import case_from_dict
+    from thermex.exploration.sweep import sweep
+
+    case = case_from_dict(
+        {
+            "crystal": {"prototype": "rock salt", "sites": ["Na", "Cl"], "a": 5.64},
+            "potential": {
+                "charges": {"Na": 1.0, "Cl": -1.0},
+                "pair": [{"between": ["Na", "Cl"], "form": "Born", "n": 8.0, "static_distance": 2.82}],
+            },
+            "conditions": {"temperature": {"from": 0, "to": 1000, "step": 50}},
+            "accuracy": {"anharmonic": "none"},
+        }
+    )
+    one = best(lambda: computing(case))
+    start = perf_counter()
+    sweep(case, "Na-Cl.n", np.linspace(6.0, 12.0, 15))
+    many = perf_counter() - start
+    return {"one prediction s": one, "15 points s": many, "ratio": many / one}
+
+
+def measure_all() -> dict[str, Any]:
+    """Measure every row; a row that cannot run says why."""
+    from thermex.expansion import predict
+
+    case = plain_case()
+    predict(case)
+    imports = best(lambda: child(IMPORTS))
+    parts = best(lambda: child(PARTS))
+    own = best(lambda: computing(case))
+    corrected = best(lambda: computing(replace(case, accuracy=replace(case.accuracy, anharmonic="leading order"))))
+    with tempfile.TemporaryDirectory() as folder:
+        process = best(lambda: whole_process(["--anharmonic", "none"]))
+        written = whole_process(["--out", folder])
+    rows: dict[str, Any] = {
+        "import of numpy, scipy, ase, phonopy, s": imports,
+        "import of the parts of them that are used, s": parts,
+        "predict, computing, s": own,
+        "ratio computing / import": own / imports,
+        "ratio computing / import of the parts used": own / parts,
+        "leading order adds, s": corrected - own,
+        "whole process, s": process,
+        "ratio whole process / import": process / imports,
+        "ratio whole process / import of the parts used": process / parts,
+        "whole process with files, s": written,
+        "peak memory, MB": peak_memory(),
+        "against the hand-made way": against_handmade(),
+    }
+    try:
+        rows["sweep of 15 exponents"] = sweep_of_exponents()
+    except Exception as error:  # a row must not stop the others
+        rows["sweep of 15 exponents"] = f"not measured: {error}"
+    rows["own peak memory, MB"] = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024
+    return rows
+
+
+def show(rows: dict[str, Any], indent: int = 0) -> None:
+    """Print the rows."""
+    for name, value in rows.items():
+        if isinstance(value, dict):
+            print(" " * indent + name + ":")
+            show(value, indent + 2)
+        else:
+            text = f"{value:.4g}" if isinstance(value, float) else str(value)
+            print(" " * indent + f"{name:<52} {text}")
+
+
+def main() -> None:
+    """Measure, print and write."""
+    parser = argparse.ArgumentParser(description=__doc__)
+    parser.add_argument("--out", type=Path, help="write the figures as JSON")
+    arguments = parser.parse_args()
+    rows = measure_all()
+    show(rows)
+    if arguments.out:
+        arguments.out.write_text(json.dumps(rows, indent=1), encoding="utf-8")
+
+
+if __name__ == "__main__":
+    main()
