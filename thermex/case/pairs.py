@@ -118,6 +118,6 @@ def read_polarisable(walker: Walker, value: object) -> dict[str, Polarisable]:
                 numbers[key.name] = walker.number(key, content[key.name], f"{where}.{key.name}")
             elif not key.default:
                 walker.fault(f"{where}.{key.name}", "is missing", f"give it in {key.unit}")
-        if len(numbers) >= 2 and None not in numbers.values():
+        if {"shell_charge", "spring_constant"} <= set(numbers) and None not in numbers.values():
             out[str(name)] = Polarisable(**{k: float(v) for k, v in numbers.items() if v is not None})
     return out
