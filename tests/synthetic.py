@@ -7,6 +7,7 @@ the right shape and a plausible size. Nothing in here may be shown as a property
 from __future__ import annotations
 
 from dataclasses import replace
+
 import numpy as np
 from numpy.typing import NDArray
 from scipy.integrate import trapezoid

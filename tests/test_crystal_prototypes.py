@@ -419,5 +419,5 @@ def test_tetragonal_view_of_a_cubic_crystal() -> None:
 
 
 def test_unknown_name_suggests_the_nearest() -> None:
-    with pytest.raises(InputError, match='no structure type "rutil".*did you mean "rutile"'):
+    with pytest.raises(InputError, match=r'no structure type "rutil".*did you mean "rutile"'):
         find_prototype("rutil")

@@ -210,7 +210,7 @@ def test_files_that_are_none(tmp_path: Path) -> None:
             load_series_file(path)
     assert "no values" in faults(tmp_path, "")[0]
     assert "no values" in faults(tmp_path, "# only: words\n")[0]
-    assert "no values" in faults(tmp_path, MEAN.split("100,")[0])[0]
+    assert "no values" in faults(tmp_path, MEAN.split("100,", maxsplit=1)[0])[0]
     assert "UTF-8" in faults(tmp_path, MEAN.encode("latin-1"))[0]
     assert "line 5" in faults(tmp_path, MEAN.encode("latin-1"))[0]
     assert "8 MB" in faults(tmp_path, b"1, 2\n" * 2_000_000)[0]

@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from thermex import modes, oscillators
 from thermex.anharmonic.method import Method, method_error
+from thermex.calculator_lattice import named_calculator
 from thermex.case.case import Case
 from thermex.chebyshev import Box
 from thermex.constants import BOLTZMANN, J_PER_MOL_EV
@@ -17,7 +18,6 @@ from thermex.crystal.build import build_crystal
 from thermex.crystal.crystal import Crystal
 from thermex.errors import InputError
 from thermex.free_energy import Vibrations
-from thermex.calculator_lattice import named_calculator
 from thermex.ground import Ground, calculator_ground, fixed_ground, relaxed_ground
 from thermex.mesh import Mesh, divisions_for, graded, long_wave_sphere
 from thermex.potential.bonds import find_bonds
@@ -28,6 +28,7 @@ from thermex.relaxation import freedom_of
 from thermex.road import Progress, Travelled
 from thermex.static import turning_points
 from thermex.stopwatch import Stopwatch
+from thermex.tour import LARGE
 from thermex.volume_path import path_alpha
 from thermex.zone_centre import zone_centre
 
@@ -127,25 +128,31 @@ class SampledModes:
 
 
 def sample_modes(travelled: Travelled) -> SampledModes:
-    """Compute modes with their γ and amplitudes at a few cells along the branch."""
+    """Compute modes with their γ and amplitudes at a few cells along the branch (one for large cells)."""
     lattice, states = travelled.lattice, travelled.solution.states
     crystal = lattice.crystal
     mesh = graded(crystal, divisions_for(crystal, 8 if crystal.size < 8 else 4))
-    sphere = long_wave_sphere(crystal, 18 if crystal.size < 8 else 10)
-    motion, slow = lattice.motion(mesh.points), lattice.motion(sphere.points)
+    sphere = long_wave_sphere(crystal, 18 if crystal.size < 8 else 10 if crystal.size <= LARGE else 4)
+    motion = lattice.motion(np.concatenate([mesh.points, sphere.points]))
+    size = len(mesh.points)
     log_volume = states.x @ travelled.load.trace
     low, high = float(log_volume.min()), float(log_volume.max())
     margin = 0.05 * (high - low) + 1e-5
-    box = Box(np.array([[low - margin, high + margin]]), (3 if crystal.size < 8 else 2,))
+    count = 3 if crystal.size < 8 else 2 if crystal.size <= LARGE else 1
+    box = Box(np.array([[low - margin, high + margin]]), (count,))
     direction = squeeze(travelled)
     order = np.argsort(log_volume)
     warm = []
+    limit: modes.LongWaveLimit | None = None
     for point in box.grid[:, 0]:
         x = np.array([np.interp(point, log_volume[order], column[order]) for column in states.x.T])
-        warm.append(modes.cell_modes(motion, mesh, x, direction))
-    cold = modes.cell_modes(slow, sphere, states.x[0], direction)
-    volume = float(travelled.load.volume(states.x[:1])[0])
-    return SampledModes(mesh, box, warm, modes.long_wave_limit(cold, sphere, volume))
+        both = modes.cell_modes(motion, x, direction)
+        warm.append(modes.on_mesh(both, mesh, slice(0, size)))
+        if limit is None:
+            sound = modes.on_mesh(both, sphere, slice(size, None))
+            limit = modes.long_wave_limit(sound, sphere, float(travelled.load.volume(x[None])[0]))
+    assert limit is not None
+    return SampledModes(mesh, box, warm, limit)
 
 
 def squeeze(travelled: Travelled) -> Array:

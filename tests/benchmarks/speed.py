@@ -112,8 +112,9 @@ def against_handmade() -> dict[str, Any]:
 
 def sweep_of_exponents() -> dict[str, float]:
     """Compare a sweep of 15 exponents of a rock-salt Born crystal with one prediction."""
-    from thermex.case.reader import case_from_dict
     from thermex.exploration.sweep import sweep
+
+    from thermex.case.reader import case_from_dict
 
     case = case_from_dict(
         {

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Iterable, Mapping
 from difflib import get_close_matches
+from itertools import pairwise
 from pathlib import Path
 from typing import Any
 
@@ -100,9 +101,8 @@ class Walker:
 
     def texts(self, value: object, where: str) -> tuple[str, ...] | None:
         """Return a list of texts."""
-        if isinstance(value, list) and 0 < len(value) <= 100:
-            if all(isinstance(v, str) and 0 < len(v) <= 40 for v in value):
-                return tuple(value)
+        if isinstance(value, list) and 0 < len(value) <= 100 and all(_is_short_text(v) for v in value):
+            return tuple(value)
         self.fault(where, f"is {shown(value)}", 'give a list of texts, such as ["Mg", "O"]')
         return None
 
@@ -133,7 +133,7 @@ class Walker:
         good = [n for n in numbers if n is not None]
         if len(good) < len(numbers):
             return None
-        for before, after in zip(good, good[1:], strict=False):
+        for before, after in pairwise(good):
             if after <= before:
                 self.fault(where, f"goes from {before:g} to {after:g}", "give ascending temperatures")
                 return None
@@ -176,6 +176,10 @@ class Walker:
         return tuple(rows)
 
 
+def _is_short_text(value: object) -> bool:
+    return isinstance(value, str) and 0 < len(value) <= 40
+
+
 def existing(walker: Walker, folder: Path, name: str, where: str) -> Path | None:
     """Return an existing file named in a case, relative to the folder of the case."""
     path = folder / name
@@ -194,7 +198,8 @@ def bounds(key: Key) -> str:
     unit = f" {key.unit}" if key.unit else ""
     if math.isinf(key.high):
         return f"give a number {'above' if key.strict else 'of at least'} {key.low:g}{unit}"
-    return f"give a number {'above' if key.strict else 'from'} {key.low:g} {'and up ' if key.strict else ''}to {key.high:g}{unit}"
+    start = f"above {key.low:g} and up" if key.strict else f"from {key.low:g}"
+    return f"give a number {start} to {key.high:g}{unit}"
 
 
 def join(path: str, key: str) -> str:

@@ -121,7 +121,7 @@ def record_body(record: Mapping[str, Any]) -> str:
     plain_words: dict[str, Callable[[Any], str]] = {
         "version": str,
         "date": str,
-        "command": lambda words: " ".join(words),
+        "command": " ".join,
         "python": str,
         "platform": str,
         "libraries": lambda found: ", ".join(f"{name} {version}" for name, version in found.items()),

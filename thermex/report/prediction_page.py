@@ -254,8 +254,8 @@ def _pairs(prediction: Prediction) -> str:
             plot_crystal_energy(prediction),
             "Energy of the whole crystal against its nearest-neighbour distance, beside a parabola of the same "
             "curvature",
-            "All pairs summed, the cell scaled uniformly. Where the well is flatter outside than inside, bonds weaken as "
-            "the cell grows and heat pushes the mean distance out.",
+            "All pairs summed, the cell scaled uniformly. Where the well is flatter outside than inside, bonds weaken "
+            "as the cell grows and heat pushes the mean distance out.",
         ),
     ]
     return gallery(pictures)
