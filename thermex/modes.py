@@ -32,7 +32,7 @@ class CellModes:
     """Shape (nq, 3n, n): |e|² of each atom in each mode."""
 
 
-def cell_modes(motion: Motion, mesh: Mesh, x: Array, direction: Array) -> CellModes:
+def cell_modes(motion: Motion, x: Array, direction: Array) -> CellModes:
     """Return modes and their γ = −⟨e|dD/d ln V|e⟩/2ω² at strain x.
 
     Parameters
@@ -47,7 +47,13 @@ def cell_modes(motion: Motion, mesh: Mesh, x: Array, direction: Array) -> CellMo
     squared = np.maximum((raw / THZ_PER_ROOT) ** 2, 1e-300)
     weights = np.abs(vectors) ** 2
     per_atom = weights.reshape(len(raw), -1, 3, raw.shape[1]).sum(axis=2).swapaxes(1, 2)
-    return CellModes(long_wave_scaled(raw, mesh), -0.5 * slope / squared, per_atom)
+    return CellModes(raw, -0.5 * slope / squared, per_atom)
+
+
+def on_mesh(modes: CellModes, mesh: Mesh, part: slice) -> CellModes:
+    """Return the modes of one mesh among the points computed, long waves scaled back."""
+    scaled = long_wave_scaled(modes.frequencies[part], mesh)
+    return CellModes(scaled, modes.gruneisen[part], modes.amplitudes[part])
 
 
 def average_gruneisen(modes: CellModes, weights: Array, kelvin: float) -> float:

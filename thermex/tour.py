@@ -82,7 +82,7 @@ def tour(lattice: BoxLattice, load: Load, temperature: Array, accuracy: float, p
     probes = stability_probes(lattice.crystal)
     refuse_unstable(probes, phonons.frequencies(lattice.motion(probes)(np.zeros(d))), "at the static lattice")
     progress("search for the path", 0, 3)
-    box, path, reason = _search(lattice, load, float(temperature.max()))
+    _box, path, reason = _search(lattice, load, float(temperature.max()))
     if not len(path.temperature):
         raise BranchEndError("no minimum of the free energy even at 0 K", where="free energy")
     end = float(path.temperature[-1])
@@ -92,6 +92,7 @@ def tour(lattice: BoxLattice, load: Load, temperature: Array, accuracy: float, p
     progress("phonons", 1, 3)
     window = _tight(path.x[path.temperature <= max(float(wanted.max()), path.temperature[0])])
     points = LEAN_POINTS[d] if accuracy > 2e-3 else FINAL_POINTS[d]
+    points = 4 if lattice.crystal.size > LARGE else points
     solution = _final(lattice, Box(window, (points,) * d), load, wanted, path, accuracy)
     progress("supercell", 2, 3)
     excess = convergence.supercell_error(lattice, solution, load, 4, 2)
@@ -115,6 +116,10 @@ def tour(lattice: BoxLattice, load: Load, temperature: Array, accuracy: float, p
     )
 
 
+#: Cells with more atoms than this are treated with fewer points and coarser meshes.
+LARGE = 40
+
+
 def _search(lattice: BoxLattice, load: Load, highest: float) -> tuple[Box, Path, str]:
     """Move and stretch a coarse box until the path lies inside it."""
     d = len(load.trace)
@@ -122,9 +127,10 @@ def _search(lattice: BoxLattice, load: Load, highest: float) -> tuple[Box, Path,
     grid = np.concatenate([[0.0], np.linspace(0.05, 1.1, 22) * highest])
     divisions = divisions_for(lattice.crystal, 4)
     stop = ""
-    box, path = Box(window, (COARSE_POINTS[d],) * d), Path(np.zeros(0), np.zeros((0, d)), True)
+    points = 3 if lattice.crystal.size > LARGE else COARSE_POINTS[d]
+    box, path = Box(window, (points,) * d), Path(np.zeros(0), np.zeros((0, d)), True)
     for _ in range(7):
-        box = Box(window, (COARSE_POINTS[d],) * d)
+        box = Box(window, (points,) * d)
         mesh = graded(lattice.crystal, divisions)
         found = convergence.frequencies_over(lattice.motion(mesh.points), box, mesh)
         if found.min() < 0.0:
@@ -177,7 +183,7 @@ def _tight(x: Array) -> Array:
 
 def meshes_for(lattice: BoxLattice, accuracy: float) -> tuple[int, ...]:
     """Return the meshes tried one after the other: coarser for large cells, whose zone is small."""
-    if lattice.crystal.size > 40:
+    if lattice.crystal.size > LARGE:
         return (4, 6)
     if lattice.crystal.size > 12:
         return (6, 8)
