@@ -44,7 +44,7 @@ def test_forces_are_gradients_of_the_residual() -> None:
 
 
 def test_residual_begins_at_third_order() -> None:
-    cell, _, _, row = cell_of("S3", 2)
+    cell, _, _, _row = cell_of("S3", 2)
     y = 1e-3 * np.random.default_rng(2).normal(size=(cell.size, 1))
     energies = [cell.force(s * y)[0][0] for s in (1.0, 2.0, -1.0, -2.0)]
     assert energies[1] - energies[3] == pytest.approx(8.0 * (energies[0] - energies[2]), rel=1e-3)
@@ -63,7 +63,7 @@ def averages(cell: Cell, kelvin: float, blocks: int) -> np.ndarray:
 
 
 def test_low_temperature_limit_is_the_leading_order_of_the_same_cell() -> None:
-    cell, supercell, x, row = cell_of("S3", 0)
+    cell, supercell, x, _row = cell_of("S3", 0)
     own = supercell.leading(np.array([[x - 0.01, x + 0.01]]))
     value, slope, _ = own.value(np.array([x]))
     found = averages(cell, 0.3, 12) / supercell.primitive

@@ -201,7 +201,7 @@ def sample(
     progress("sampling", 0, FEWEST + 1)
     first = runs.at(x).extended(mapper)
     x = outlook.strain(fit(first.points(), leading.best).best, temperature)
-    series = runs.at(np.clip(x, *leading.best.box.window[0]), first)
+    series = runs.at(np.clip(x, *leading.best.box.window[0]), first.round)
     error, pure, interrupted = float("inf"), float("inf"), False
     # more blocks do not help once what is left is the misfit of a smooth curve
     while series.blocks < MOST and (series.blocks < FEWEST or (error > plan.goal and pure > plan.goal / 3.0)):
@@ -306,9 +306,7 @@ class Runs:
     temperature: Array
     seed: int
 
-    def at(self, x: Array, before: Series | None = None) -> Series:
-        """Begin a series at strains x (nT,), walkers going on from where those of another stand."""
+    def at(self, x: Array, number: int = 0) -> Series:
+        """Begin a series at strains x (nT,), walkers at rest; its blocks are numbered from ``number`` on."""
         cells = tuple(cell_at(self.supercell.periodic, self.supercell.bare, float(v)) for v in x)
-        if before is None:
-            return Series(self, x, cells, (None,) * len(x))
-        return Series(self, x, cells, before.y, round=before.round)
+        return Series(self, x, cells, (None,) * len(x), round=number)
