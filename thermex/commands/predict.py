@@ -26,9 +26,7 @@ def add_parser(subparsers: Any, common: argparse.ArgumentParser) -> None:
         description="Predict the thermal expansion of the crystal in a case file, beside measured values.",
     )
     parser.add_argument("case", metavar="CASE", type=Path, help="case file (TOML)")
-    parser.add_argument(
-        "--out", metavar="FOLDER", type=Path, help="write table, data, figures, page, record here"
-    )
+    parser.add_argument("--out", metavar="FOLDER", type=Path, help="write table, data, figures, page, record here")
     parser.add_argument(
         "--anharmonic",
         choices=ANHARMONIC,
@@ -41,12 +39,13 @@ def run(arguments: argparse.Namespace) -> int:
     """Predict, write the files when asked to, then show the table."""
     from thermex.case.reader import load_case
     from thermex.expansion import predict
-    from thermex.report.beside import beside_of
+    from thermex.report.beside import beside_of, material_of
     from thermex.report.table import prediction_text
 
     case = with_anharmonic(load_case(arguments.case), arguments.anharmonic)
     if arguments.out is not None:
         _refuse_early(arguments.out)
+    material_of(case)  # a wrong name or file is told before the computation
     with progress_on(sys.stderr) as progress:
         prediction = predict(case, progress=progress)
     beside = beside_of(prediction)

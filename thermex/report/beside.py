@@ -2,14 +2,15 @@
 
 from __future__ import annotations
 
-import warnings
-from collections.abc import Sequence
-from dataclasses import dataclass, field
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
-from thermex.errors import ThermexWarning
+from thermex.case.case import Case
+from thermex.measured import Material, best_measured, load_material, load_series_file
+from thermex.measured.lookup import trust_order
 from thermex.prediction import Prediction
 
 Array = NDArray[np.float64]
@@ -60,11 +61,79 @@ class Beside:
         return tuple(curve for curve in self.curves if curve.quantity == quantity)
 
 
+#: Quantity of a measured series → name in the JSON of a prediction.
+NAMES = {
+    "linear expansion coefficient": "alpha_linear_per_K",
+    "elongation": "elongation",
+    "Grüneisen parameter": "gruneisen",
+    "isothermal bulk modulus": "bulk_modulus_T_GPa",
+    "adiabatic bulk modulus": "bulk_modulus_S_GPa",
+    "heat capacity at constant pressure": "heat_capacity_P_J_per_mol_K",
+}
+
+#: Elongations are drawn together when their reference temperatures differ by less than this, K.
+SAME_REFERENCE_K = 10.0
+
+
 def beside_of(prediction: Prediction) -> Beside:
-    """Return what was measured on the material that the case names; empty when it names none."""
-    if prediction.case.measured is not None:
-        warnings.warn("measured values cannot be read yet; none are compared", ThermexWarning, stacklevel=2)
-    return Beside()
+    """Return what was measured on the material that the case names; empty when it names none.
+
+    The most trustworthy value that reaches a temperature is taken (:func:`thermex.measured.best_measured`);
+    every usable series in the convention of the prediction becomes a curve. A user's own file stands
+    before the shipped values.
+
+    Raises
+    ------
+    InputError
+        The material is not known, or the file cannot be read.
+    """
+    material = material_of(prediction.case)
+    if material is None:
+        return Beside()
+    kelvin = prediction.temperature_K
+    columns = {}
+    for quantity, name in NAMES.items():
+        if quantity == "elongation":
+            continue
+        found = [best_measured(material, quantity, float(value)) for value in kelvin]
+        if any(found):
+            value = np.array([f.value if f else np.nan for f in found])
+            columns[name] = Column(value, tuple(f.source_number if f else 0 for f in found))
+    return Beside(material.sources, columns, tuple(_curves(material, prediction)))
+
+
+def material_of(case: Case) -> Material | None:
+    """Return the material of a case with the series of the user's own file put before its own.
+
+    Raises
+    ------
+    InputError
+        The material is not known, or the file cannot be read.
+    """
+    asked = case.measured
+    if asked is None:
+        return None
+    own = load_series_file(asked.file) if asked.file is not None else ()
+    if asked.material is None:
+        structure = case.crystal.prototype or ""
+        return Material("", "own values", (), structure, own) if own else None
+    material = load_material(asked.material)
+    first = max((series.source_number for series in own), default=0)
+    shifted = [replace(series, source_number=series.source_number + first) for series in material.series]
+    return replace(material, series=(*own, *shifted))
+
+
+def _curves(material: Material, prediction: Prediction) -> Iterator[Curve]:
+    """Return the usable series that a figure may draw, the most trustworthy first."""
+    for series in sorted(material.series, key=trust_order):
+        name = NAMES.get(series.quantity)
+        if name is None or not series.usable or series.kind not in ("", "instantaneous"):
+            continue
+        reference = series.reference_temperature_K
+        if reference is not None and abs(reference - prediction.reference_temperature_K) > SAME_REFERENCE_K:
+            continue
+        axis = "" if material.is_cubic else series.axis
+        yield Curve(name, axis, series.temperature_K, series.value, series.uncertainty, series.source_number)
 
 
 #: How far from a single measured temperature a value still stands for it, K.
@@ -112,9 +181,7 @@ def value_at(curve: Curve, temperature_K: Array) -> Array:
     gap = grid[above] - grid[below]
     inside = (temperature_K >= grid[below]) & (temperature_K <= grid[above])
     bridged = inside & (gap <= np.maximum(LONGEST_GAP_K, LONGEST_GAP_SHARE * temperature_K))
-    nearest = np.where(
-        np.abs(grid[below] - temperature_K) <= np.abs(grid[above] - temperature_K), below, above
-    )
+    nearest = np.where(np.abs(grid[below] - temperature_K) <= np.abs(grid[above] - temperature_K), below, above)
     close = np.abs(grid[nearest] - temperature_K) <= SAME_TEMPERATURE_K
     line: Array = np.interp(temperature_K, grid, values)
     found: Array = np.where(bridged, line, np.where(close, values[nearest], np.nan))
