@@ -15,7 +15,7 @@ from thermex.case.published import published
 from thermex.crystal.build import build_crystal
 from thermex.crystal.crystal import Crystal
 from thermex.elastic import sound_speeds, stiffness
-from thermex.ground import fixed_ground
+from thermex.ground import GENERAL_SPAN, fixed_ground
 from thermex.lattice import supercells_for, uniform_lattice
 from thermex.potential.build import pair_model
 from thermex.potential.dynamical import commensurate_points, force_constants_at
@@ -154,15 +154,17 @@ def test_lengths_and_energies_scale() -> None:
     )
 
 
-@pytest.mark.parametrize("name", ["S1", "S2", "S6"])
+@pytest.mark.parametrize("name", ["S1", "S2", "S3", "S5", "S6"])
 def test_phonopy_road_against_ewald_at_random_q(name: str) -> None:
-    """Below 10⁻³ THz everywhere from a 6³ supercell (9³ for dispersion)."""
+    """Below 10⁻³ THz everywhere, at the supercell that a prediction begins with.
+
+    Copper's Morse tail (decay length 0.74 Å) needs the next one, to which a prediction goes by itself.
+    """
     case = reference_case(name)
     model, crystal = at_rest(name)
-    q = random_points(24, seed=11)
-    span = 6.5
+    q = random_points(60, seed=11)
+    span = GENERAL_SPAN * (1.4 if name == "S5" else 1.0)
     lattice = uniform_lattice(model, scaled_energy(model, crystal), supercells_for(crystal, span))
-    assert min(lattice.supercells.short) >= 6
     through_phonopy = phonons.frequencies(lattice.motion(q)(np.zeros(1)))
     exact = phonons.frequencies(lattice.exact_motion(q)(np.zeros(1)))
     assert np.abs(through_phonopy - exact).max() < 1e-3, case.title
