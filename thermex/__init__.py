@@ -14,12 +14,19 @@ if TYPE_CHECKING:
     from thermex.case.reader import case_from_dict, load_case
     from thermex.errors import InputError, NoAnswerError, ThermexError
     from thermex.expansion import predict
+    from thermex.exploration.calibrate import Datum, calibrate
+    from thermex.exploration.match import match
+    from thermex.exploration.sweep import sweep
     from thermex.measured import load_material, load_series_file, materials
     from thermex.prediction import Prediction
 
 __version__ = "0.1.0"
 
 _HOMES = {
+    "Datum": "thermex.exploration.calibrate",
+    "calibrate": "thermex.exploration.calibrate",
+    "match": "thermex.exploration.match",
+    "sweep": "thermex.exploration.sweep",
     "Case": "thermex.case.case",
     "InputError": "thermex.errors",
     "NoAnswerError": "thermex.errors",
@@ -39,20 +46,24 @@ _HOMES = {
 
 __all__ = [
     "Case",
+    "Datum",
     "InputError",
     "NoAnswerError",
     "Prediction",
     "ThermexError",
+    "calibrate",
     "case_from_dict",
     "case_from_published",
     "load_case",
     "load_material",
     "load_series_file",
+    "match",
     "materials",
     "predict",
     "published",
     "published_for",
     "published_names",
+    "sweep",
 ]
 
 

@@ -88,7 +88,11 @@ def model_value(point: Point, datum: Datum) -> float:
         length = point.at("lattice_A", datum.temperature_K, datum.axis)
         start = point.at("lattice_A", datum.reference_temperature_K, datum.axis)
         stretch = length / start - 1.0
-        return stretch if datum.quantity == "elongation" else stretch / (datum.temperature_K - datum.reference_temperature_K)
+        return (
+            stretch
+            if datum.quantity == "elongation"
+            else stretch / (datum.temperature_K - datum.reference_temperature_K)
+        )
     return point.at(datum.quantity, datum.temperature_K, datum.axis)
 
 
@@ -177,7 +181,9 @@ def _refuse(parameters: Sequence[str], data: Sequence[Datum]) -> None:
         )
     for datum in data:
         if datum.quantity not in QUANTITIES:
-            raise InputError(f'"{datum.quantity}" cannot be fitted', where="data", fix=f"one of {', '.join(QUANTITIES)}")
+            raise InputError(
+                f'"{datum.quantity}" cannot be fitted', where="data", fix=f"one of {', '.join(QUANTITIES)}"
+            )
         if not datum.uncertainty > 0.0:
             raise InputError(f"a datum at {datum.temperature_K:g} K has no uncertainty", where="data", fix="give one")
 

@@ -9,7 +9,6 @@ V. Ya. Vashchenko and V. N. Zubarev, Sov. Phys. Solid State 5, 653 (1963); M. Bo
 
 from __future__ import annotations
 
-
 from thermex.constants import COULOMB, GPA_PER_EV_A3
 
 #: Madelung constant of rock salt, nearest-neighbour distance (E. Madelung 1918).

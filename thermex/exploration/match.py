@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass, replace
+from itertools import pairwise
 
 import numpy as np
 
@@ -132,7 +133,7 @@ def _root(found: Callable[[float], float], values: np.ndarray, target: float) ->
 
     rows = [(float(v), found(float(v)) - target) for v in values]
     good = [(v, d) for v, d in rows if np.isfinite(d)]
-    brackets = [(a[0], b[0]) for a, b in zip(good, good[1:], strict=False) if a[1] * b[1] <= 0.0]
+    brackets = [(a[0], b[0]) for a, b in pairwise(good) if a[1] * b[1] <= 0.0]
     if not brackets:
         return None
     middle = 0.5 * (values[0] + values[-1])

@@ -38,7 +38,9 @@ def quantity_of(series: Series) -> str | None:
     return None
 
 
-def data_of(series: Sequence[Series], quantities: Sequence[str], low: float, high: float, most: int = 40) -> list[Datum]:
+def data_of(
+    series: Sequence[Series], quantities: Sequence[str], low: float, high: float, most: int = 40
+) -> list[Datum]:
     """Return data of the chosen quantities between two temperatures, thinned evenly to ``most`` a series."""
     out = []
     for one in series:

@@ -125,7 +125,7 @@ def _key(entry: tuple[float, ...]) -> str:
 
 def _held(case: Case, parameter: str) -> Case:
     """Return the case with the amplitude of the swept pair replaced by the static distance it now gives."""
-    label = parameter.split(".")[0]
+    label = parameter.split(".", maxsplit=1)[0]
     for index, pair in enumerate(case.potential.pairs):
         names = {"-".join(pair.between), "-".join(reversed(pair.between))}
         key = parameter.rsplit(".", 1)[1]

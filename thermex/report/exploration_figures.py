@@ -1,0 +1,76 @@
+"""Figures of sweeps: α against temperature coloured by the parameter, and against the parameter."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from matplotlib import colormaps
+from matplotlib.cm import ScalarMappable
+from matplotlib.colors import Normalize
+
+from thermex.exploration.sweep import Sweep
+from thermex.report.style import BLACK, BLUE, GREY, VERMILION, dress, legend, new_axes
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
+
+
+def plot_sweep_curves(result: Sweep, *, ax: Axes | None = None) -> Axes:
+    """Draw α(T) of every answered point, coloured by the (first) parameter, with a scale."""
+    axes = ax if ax is not None else new_axes()
+    firsts = [v[0] for v in result.values]
+    norm = Normalize(min(firsts), max(firsts) if max(firsts) > min(firsts) else min(firsts) + 1.0)
+    shade = colormaps["viridis"]
+    for value, point in zip(result.values, result.points, strict=True):
+        if point.answered:
+            alpha = np.array([np.nan if v is None else 1e6 * v for v in point.alpha_linear_per_K])
+            axes.plot(point.temperature_K, alpha, color=shade(norm(value[0])), linewidth=1.4)
+    dress(axes, x="Temperature (K)", y="Linear expansion coefficient α (10⁻⁶/K)")
+    figure: Any = axes.figure
+    figure.colorbar(ScalarMappable(norm, shade), ax=axes, label=result.parameters[0])
+    return axes
+
+
+def plot_sweep_cut(
+    result: Sweep, kelvin: float, measured: tuple[float, float] | None = None, *, ax: Axes | None = None
+) -> Axes:
+    """Draw α at one temperature against the parameter; points without an answer as crosses on the axis.
+
+    Parameters
+    ----------
+    measured
+        Measured α and its uncertainty at that temperature, 1/K, drawn as a line with a band.
+    """
+    axes = ax if ax is not None else new_axes()
+    x = np.array([v[0] for v in result.values])
+    y = np.array([1e6 * p.at("alpha_linear_per_K", kelvin) for p in result.points])
+    good = np.isfinite(y)
+    axes.plot(x[good], y[good], "o-", color=BLUE, label=f"predicted, {kelvin:g} K")
+    if (~good).any():
+        axes.plot(x[~good], np.zeros((~good).sum()), "x", color=VERMILION, label="no answer here", clip_on=False)
+    if measured is not None:
+        axes.axhline(1e6 * measured[0], color=BLACK, linewidth=1.0, label="measured")
+        if np.isfinite(measured[1]):
+            axes.axhspan(
+                1e6 * (measured[0] - measured[1]), 1e6 * (measured[0] + measured[1]), color=GREY, alpha=0.25, lw=0
+            )
+    axes.set_ylim(bottom=0.0)
+    dress(axes, x=result.parameters[0], y=f"α at {kelvin:g} K (10⁻⁶/K)")
+    legend(axes)
+    return axes
+
+
+def plot_sweep_map(result: Sweep, kelvin: float, *, ax: Axes | None = None) -> Axes:
+    """Draw α at one temperature over two parameters."""
+    axes = ax if ax is not None else new_axes()
+    xs = sorted({v[0] for v in result.values})
+    ys = sorted({v[1] for v in result.values})
+    grid = np.full((len(ys), len(xs)), np.nan)
+    for value, point in zip(result.values, result.points, strict=True):
+        grid[ys.index(value[1]), xs.index(value[0])] = 1e6 * point.at("alpha_linear_per_K", kelvin)
+    picture = axes.pcolormesh(xs, ys, grid, cmap="viridis", shading="nearest")
+    figure: Any = axes.figure
+    figure.colorbar(picture, ax=axes, label=f"α at {kelvin:g} K (10⁻⁶/K)")
+    dress(axes, x=result.parameters[0], y=result.parameters[1])
+    return axes
