@@ -40,7 +40,9 @@ def test_alpha_and_lattice(name: str) -> None:
     for k, row in enumerate(reference()[name]["table"]):
         assert p.alpha_linear_per_K[k] == pytest.approx(row["alpha_lin"], rel=allowed(name, row["T"]))
         # near the branch end dx/dT diverges, so the same error of F moves a by more
-        assert p.lattice_A["a"][k] == pytest.approx(row["a"], rel=1e-5 if row["T"] < 0.99 * limit(name) else 5e-5)
+        assert p.lattice_A["a"][k] == pytest.approx(
+            row["a"], rel=1e-5 if row["T"] < 0.99 * limit(name) else 5e-5
+        )
 
 
 @pytest.mark.parametrize("name", CUBIC)
@@ -48,9 +50,8 @@ def test_stiffness_heat_and_gruneisen(name: str) -> None:
     p = predicted(name)
     per_atom = p.crystal.size / p.crystal.formula_units
     for k, row in enumerate(reference()[name]["table"]):
-        near_end = row["T"] > 0.95 * limit(name)
-        # at 20 K long waves alone count: C_V and γ carry the error that α is allowed there
-        tolerance = 5e-2 if near_end else 1e-3 if row["T"] >= 50.0 else 2e-3
+        # argon at 80 K stands 0.1 % below its branch end, where B_T falls to zero as a square root: 0.9 %
+        tolerance = 1e-3 if row["T"] < 0.99 * limit(name) else 1e-2
         assert p.bulk_modulus_T_GPa[k] == pytest.approx(row["B_T"], rel=tolerance)
         assert p.gruneisen[k] == pytest.approx(row["gamma"], rel=tolerance)
         assert p.heat_capacity_V_J_per_mol_K[k] / per_atom == pytest.approx(row["C_V"], rel=tolerance)
