@@ -12,17 +12,24 @@ if TYPE_CHECKING:
     from thermex.case.case import Case
     from thermex.case.published import case_from_published, published, published_for, published_names
     from thermex.case.reader import case_from_dict, load_case
+    from thermex.comparison.assessment import Assessment, assess, rank
     from thermex.errors import InputError, NoAnswerError, ThermexError
     from thermex.expansion import predict
-    from thermex.exploration.calibrate import Datum, calibrate
-    from thermex.exploration.match import match
-    from thermex.exploration.sweep import sweep
+    from thermex.exploration.calibrate import Calibration, Datum, calibrate
+    from thermex.exploration.match import Match, match
+    from thermex.exploration.sweep import Sweep, sweep
     from thermex.measured import load_material, load_series_file, materials
     from thermex.prediction import Prediction
 
 __version__ = "0.1.0"
 
 _HOMES = {
+    "Calibration": "thermex.exploration.calibrate",
+    "Match": "thermex.exploration.match",
+    "Sweep": "thermex.exploration.sweep",
+    "rank": "thermex.comparison.assessment",
+    "assess": "thermex.comparison.assessment",
+    "Assessment": "thermex.comparison.assessment",
     "Datum": "thermex.exploration.calibrate",
     "calibrate": "thermex.exploration.calibrate",
     "match": "thermex.exploration.match",
@@ -45,12 +52,17 @@ _HOMES = {
 }
 
 __all__ = [
+    "Assessment",
+    "Calibration",
     "Case",
     "Datum",
     "InputError",
+    "Match",
     "NoAnswerError",
     "Prediction",
+    "Sweep",
     "ThermexError",
+    "assess",
     "calibrate",
     "case_from_dict",
     "case_from_published",
@@ -63,6 +75,7 @@ __all__ = [
     "published",
     "published_for",
     "published_names",
+    "rank",
     "sweep",
 ]
 

@@ -20,7 +20,7 @@ from thermex.commands.interruption import Interrupted
 from thermex.errors import InputError, ThermexError
 
 #: The commands, each a module of ``thermex.commands`` with ``add_parser`` and ``run``.
-COMMANDS = ("predict", "sweep", "match", "calibrate", "materials")
+COMMANDS = ("predict", "assess", "sweep", "match", "calibrate", "materials")
 
 INTERNAL_FAULT = 70
 INTERRUPTED = 130
