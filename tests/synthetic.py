@@ -69,9 +69,7 @@ def invented_case(title: str, temperatures: tuple[float, ...]) -> Case:
         provenance="",
         covariance=None,
     )
-    crystal = CrystalSpec(
-        prototype="rock salt", sites=("Mg", "O"), lattice={"a": 4.2}, inner={}, file=None, masses={}
-    )
+    crystal = CrystalSpec(prototype="rock salt", sites=("Mg", "O"), lattice={"a": 4.2}, inner={}, file=None, masses={})
     return Case(
         title=title,
         crystal=crystal,
@@ -304,6 +302,4 @@ def measured_beside(prediction: Prediction) -> Beside:
 
 
 def _curve(quantity: str, kelvin: Array, value: Array, source: int) -> Curve:
-    return Curve(
-        quantity, "", kelvin, value, 0.02 * value if source == 1 else np.full(len(value), np.nan), source
-    )
+    return Curve(quantity, "", kelvin, value, 0.02 * value if source == 1 else np.full(len(value), np.nan), source)

@@ -187,9 +187,7 @@ def test_help_imports_nothing_heavy() -> None:
         "heavy = {'matplotlib', 'ase', 'phonopy', 'scipy'} & set(sys.modules); sys.exit(str(heavy) if heavy else 0)"
     )
     root = Path(__file__).parents[1]
-    done = subprocess.run(
-        [sys.executable, "-c", program], cwd=root, capture_output=True, text=True, check=False
-    )
+    done = subprocess.run([sys.executable, "-c", program], cwd=root, capture_output=True, text=True, check=False)
     assert done.returncode == 0, done.stderr
 
 
@@ -199,9 +197,7 @@ def test_table_without_out_needs_no_matplotlib() -> None:
         "sys.exit('matplotlib' if 'matplotlib' in sys.modules else 0)"
     )
     root = Path(__file__).parents[1]
-    done = subprocess.run(
-        [sys.executable, "-c", program], cwd=root, capture_output=True, text=True, check=False
-    )
+    done = subprocess.run([sys.executable, "-c", program], cwd=root, capture_output=True, text=True, check=False)
     assert done.returncode == 0, done.stderr
 
 

@@ -112,7 +112,9 @@ def small_case() -> Case:
             "crystal": {"prototype": "rock salt", "sites": ["Na", "Cl"], "a": 5.64},
             "potential": {
                 "charges": {"Na": 1.0, "Cl": -1.0},
-                "pair": [{"between": ["Na", "Cl"], "form": "Born-Mayer", "A": 1090.0, "rho": 0.321, "reach": "nearest"}],
+                "pair": [
+                    {"between": ["Na", "Cl"], "form": "Born-Mayer", "A": 1090.0, "rho": 0.321, "reach": "nearest"}
+                ],
                 "covariance": {"parameters": ["Na-Cl.A", "Na-Cl.rho"], "matrix": [[25.0, 0.0], [0.0, 1e-7]]},
             },
             "conditions": {"temperature": [100, 200, 300]},

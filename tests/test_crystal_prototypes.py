@@ -211,9 +211,7 @@ def test_electrostatic_energy_of_axial_oxides(
     name: str, charges: tuple[int, int], values: dict[str, float], energy: float
 ) -> None:
     crystal = built(name, **values)
-    assert coulomb_energy(crystal, dict(zip(SITES[name], charges, strict=True))) == pytest.approx(
-        energy, abs=6e-6
-    )
+    assert coulomb_energy(crystal, dict(zip(SITES[name], charges, strict=True))) == pytest.approx(energy, abs=6e-6)
 
 
 # coordination numbers (centre, neighbour, number): Wells, Structural Inorganic Chemistry, from memory

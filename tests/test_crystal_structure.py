@@ -93,9 +93,7 @@ def test_supercell_in_any_orientation_is_reduced() -> None:
 def test_rhombohedral_input_gets_hexagonal_axes() -> None:
     # bismuth: rhombohedral a 4.746 Å, α 57.23°, z 0.234 → hexagonal a 4.546, c 11.862 Å
     # (Cucka & Barrett, Acta Cryst. 15 (1962) 865, from memory)
-    cell = Atoms(
-        "Bi2", scaled_positions=[[0.234] * 3, [-0.234] * 3], cell=[4.746] * 3 + [57.23] * 3, pbc=True
-    )
+    cell = Atoms("Bi2", scaled_positions=[[0.234] * 3, [-0.234] * 3], cell=[4.746] * 3 + [57.23] * 3, pbc=True)
     crystal = crystal_from_atoms(cell)
     assert (crystal.space_group, crystal.size, crystal.axis_names) == (166, 2, ("a", "c"))
     assert crystal.lattice_parameters == pytest.approx([4.546, 11.862], abs=0.01)
@@ -219,9 +217,7 @@ def test_refuses_overlaps() -> None:
 
 
 def test_refuses_free_angles() -> None:
-    monoclinic = Atoms(
-        "ZrO", scaled_positions=[[0.1, 0.2, 0.3], [0.5, 0.5, 0.45]], cell=[5.1, 5.2, 5.3, 90, 99, 90]
-    )
+    monoclinic = Atoms("ZrO", scaled_positions=[[0.1, 0.2, 0.3], [0.5, 0.5, 0.45]], cell=[5.1, 5.2, 5.3, 90, 99, 90])
     monoclinic.pbc = True
     refused(monoclinic, r"triclinic \(space group 1\)")
     refused(Atoms("Zr", cell=[5.1, 5.2, 5.3, 90, 99, 90], pbc=True), r"monoclinic \(space group 10\)")

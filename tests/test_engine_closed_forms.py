@@ -56,9 +56,7 @@ def mie_case(prototype: str, a: float, n: float, m: float) -> Case:
         ("bcc", 2.0 / np.sqrt(3.0), 1.068432, -8.237292, 70.1868),
     ],
 )
-def test_lennard_jones_crystals(
-    prototype: str, edge: float, distance: float, energy: float, modulus: float
-) -> None:
+def test_lennard_jones_crystals(prototype: str, edge: float, distance: float, energy: float, modulus: float) -> None:
     found = scaled_minimum(mie_case(prototype, edge * 3.7, 12.0, 6.0))
     assert found[0] / edge / 3.4 == pytest.approx(distance, abs=1e-6)
     assert found[1] / 0.0104 == pytest.approx(energy, abs=2e-6)
@@ -142,9 +140,7 @@ def a_and_modulus(case: Case) -> tuple[float, float]:
 
 
 # S. Grieshammer et al., Solid State Ionics 355, 115405 (2020), table 2: printed to 0.01 Å and 1 GPa.
-@pytest.mark.parametrize(
-    "name", [n for n in published_names() if "published_bulk_modulus_GPa" in published(n).check]
-)
+@pytest.mark.parametrize("name", [n for n in published_names() if "published_bulk_modulus_GPa" in published(n).check])
 def test_published_ceria(name: str) -> None:
     check = published(name).check
     found = static(case_from_published(name, (300.0,)))
@@ -227,9 +223,7 @@ def test_lennard_jones_gruneisen_parameter() -> None:
     frequency = np.sqrt(squared[1])
     weights = mesh.weights[:, None] / 3.0
     assert np.sum(weights * gamma) == pytest.approx(2.9635, abs=1e-3)
-    assert np.sum(weights * gamma * frequency) / np.sum(weights * frequency) == pytest.approx(
-        2.9910, abs=1e-3
-    )
+    assert np.sum(weights * gamma * frequency) / np.sum(weights * frequency) == pytest.approx(2.9910, abs=1e-3)
     # trace check: the mean ω² is that of one atom in the field of the others at rest, 377.04 ε/(m σ²)
     mean = np.sum(weights * squared[1]) * crystal.masses[0] * 3.4**2 / 0.0104
     assert mean == pytest.approx(377.040, rel=1e-4)

@@ -40,9 +40,7 @@ def test_alpha_and_lattice(name: str) -> None:
     for k, row in enumerate(reference()[name]["table"]):
         assert p.alpha_linear_per_K[k] == pytest.approx(row["alpha_lin"], rel=allowed(name, row["T"]))
         # near the branch end dx/dT diverges, so the same error of F moves a by more
-        assert p.lattice_A["a"][k] == pytest.approx(
-            row["a"], rel=1e-5 if row["T"] < 0.99 * limit(name) else 5e-5
-        )
+        assert p.lattice_A["a"][k] == pytest.approx(row["a"], rel=1e-5 if row["T"] < 0.99 * limit(name) else 5e-5)
 
 
 @pytest.mark.parametrize("name", CUBIC)

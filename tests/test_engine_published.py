@@ -55,9 +55,7 @@ FARTHER = ("UO2 Yakub-09", "UO2 Arima-05", "UO2 Nekrasov-08")
 def test_urania_against_molecular_dynamics(name: str) -> None:
     polynomial = published(name).check["molecular_dynamics_a_A"]["polynomial_T3_T2_T1_T0"]
     p = quasiharmonic(name, 1000.0)
-    assert p.lattice_A["a"][0] == pytest.approx(
-        np.polyval(polynomial, 1000.0), rel=2.5e-4 if name in NEAR else 1e-3
-    )
+    assert p.lattice_A["a"][0] == pytest.approx(np.polyval(polynomial, 1000.0), rel=2.5e-4 if name in NEAR else 1e-3)
     if name in NEAR:
         alpha = np.polyval(np.polyder(polynomial), 1000.0) / np.polyval(polynomial, 1000.0)
         assert p.alpha_linear_per_K[0] == pytest.approx(alpha, rel=0.07)
@@ -139,9 +137,7 @@ def test_phonopy_thermal_properties() -> None:
     particles = model.particles(crystal)
     cell = supercell(particles, (4, 4, 4))
     folded = supercell_force_constants(model, particles, cell.repeat)
-    atoms = PhonopyAtoms(
-        ["Cu"], cell=crystal.lattice, scaled_positions=crystal.fractional, masses=crystal.masses
-    )
+    atoms = PhonopyAtoms(["Cu"], cell=crystal.lattice, scaled_positions=crystal.fractional, masses=crystal.masses)
     phonopy = Phonopy(atoms, supercell_matrix=np.diag(cell.repeat), primitive_matrix="P")
     phonopy.force_constants = folded[:, cell.owner, cell.index[:, 0], cell.index[:, 1], cell.index[:, 2]]
     phonopy.run_mesh([6, 6, 6], is_mesh_symmetry=False)

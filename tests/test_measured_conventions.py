@@ -31,9 +31,7 @@ def test_from_lengths(reference: float) -> None:
     assert stretch == pytest.approx(exact_elongation(reference), abs=1e-9)
     mean = way.mean_coefficient(T, LENGTH, reference)
     away = np.abs(T - reference) > 1.0
-    assert mean[away] == pytest.approx(
-        (exact_elongation(reference) / (T - reference + 1e-30))[away], rel=1e-4
-    )
+    assert mean[away] == pytest.approx((exact_elongation(reference) / (T - reference + 1e-30))[away], rel=1e-4)
     assert np.isfinite(mean).all()
     assert way.instantaneous_coefficient(T, LENGTH) == pytest.approx(ALPHA, rel=1e-4)
 

@@ -74,9 +74,7 @@ def test_a_mean_coefficient_in_celsius(tmp_path: Path) -> None:
         ("-", "−0.0012", -1.2e-3),
     ],
 )
-@pytest.mark.parametrize(
-    "name", ["elongation", "ΔL/L0", "dL/L₀", "thermal strain", "linear thermal expansion"]
-)
+@pytest.mark.parametrize("name", ["elongation", "ΔL/L0", "dL/L₀", "thermal strain", "linear thermal expansion"])
 def test_elongation(tmp_path: Path, name: str, unit: str, cell: str, value: float) -> None:
     (series,) = read(tmp_path, heading(name, unit, "reference temperature: 293.15 K") + f"400 {cell}\n")
     assert series.quantity == "elongation"
@@ -84,16 +82,10 @@ def test_elongation(tmp_path: Path, name: str, unit: str, cell: str, value: floa
     assert series.reference_temperature_K == 293.15
 
 
-@pytest.mark.parametrize(
-    "unit", ["1e-6/K", "10⁻⁶ K⁻¹", "×10⁻⁶/K", "1×10^-6/°C", "ppm/K", "µm/(m·K)", "ppm/°C"]
-)
-@pytest.mark.parametrize(
-    "name", ["alpha", "CTE", "linear expansion coefficient", "volume expansion coefficient"]
-)
+@pytest.mark.parametrize("unit", ["1e-6/K", "10⁻⁶ K⁻¹", "×10⁻⁶/K", "1×10^-6/°C", "ppm/K", "µm/(m·K)", "ppm/°C"])
+@pytest.mark.parametrize("name", ["alpha", "CTE", "linear expansion coefficient", "volume expansion coefficient"])
 def test_coefficients(tmp_path: Path, name: str, unit: str) -> None:
-    (series,) = read(
-        tmp_path, heading(name, unit, "kind: instantaneous", "axis: c") + "T_K;value\n300;10,5\n"
-    )
+    (series,) = read(tmp_path, heading(name, unit, "kind: instantaneous", "axis: c") + "T_K;value\n300;10,5\n")
     assert series.value == pytest.approx([10.5e-6])
     assert series.axis == "c"
 
@@ -117,9 +109,7 @@ def test_coefficients(tmp_path: Path, name: str, unit: str) -> None:
         ("Debye temperature", "K", "945", 945.0, "K"),
     ],
 )
-def test_the_other_quantities(
-    tmp_path: Path, quantity: str, unit: str, cell: str, value: float, house: str
-) -> None:
+def test_the_other_quantities(tmp_path: Path, quantity: str, unit: str, cell: str, value: float, house: str) -> None:
     (series,) = read(tmp_path, heading(quantity, unit) + f"300, {cell}, 1 %\n")
     assert series.value == pytest.approx([value])
     assert series.uncertainty == pytest.approx([0.01 * value])
@@ -131,9 +121,7 @@ def test_several_series_rows_in_any_order_and_a_byte_order_mark(tmp_path: Path) 
         "\ufeff## free words: anything\r\n"
         + heading("lattice parameter", "nm", "temperature unit: C", "source: one").replace("\n", "\r\n")
         + "100\t0.422\r\n20\t0.421\r\n"
-        + heading("gamma", "1", "source: two", "my own remark: these words are passed over").replace(
-            "\n", "\r\n"
-        )
+        + heading("gamma", "1", "source: two", "my own remark: these words are passed over").replace("\n", "\r\n")
         + "'25' ; \"1,5\"\r\n"
     )
     lattice, gamma = read(tmp_path, text)

@@ -108,12 +108,8 @@ def test_rotation_leaves_energy_and_frequencies(name: str) -> None:
     turned = replace(particles, lattice=particles.lattice @ turn.T, positions=particles.positions @ turn.T)
     assert lattice_response(model, turned).energy == pytest.approx(lattice_response(model, particles).energy)
     q = random_points(4)
-    one = phonons.frequencies(
-        phonons.MassWeighting(crystal.masses).dynamical(force_constants_at(model, particles, q))
-    )
-    two = phonons.frequencies(
-        phonons.MassWeighting(crystal.masses).dynamical(force_constants_at(model, turned, q))
-    )
+    one = phonons.frequencies(phonons.MassWeighting(crystal.masses).dynamical(force_constants_at(model, particles, q)))
+    two = phonons.frequencies(phonons.MassWeighting(crystal.masses).dynamical(force_constants_at(model, turned, q)))
     assert two == pytest.approx(one, rel=1e-8, abs=1e-6)
 
 

@@ -69,10 +69,7 @@ FORMS: dict[str, tuple[PairForm, sympy.Expr]] = {
     "Morse": (
         Morse(0.3429, 1.3588, 2.866),
         number(0.3429)
-        * (
-            sympy.exp(-2 * number(1.3588) * (R - number(2.866)))
-            - 2 * sympy.exp(-number(1.3588) * (R - number(2.866)))
-        ),
+        * (sympy.exp(-2 * number(1.3588) * (R - number(2.866))) - 2 * sympy.exp(-number(1.3588) * (R - number(2.866)))),
     ),
 }
 

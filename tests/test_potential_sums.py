@@ -16,9 +16,7 @@ from thermex.potential.terms import InversePower
 pytestmark = pytest.mark.literature
 
 
-def crystal(
-    prototype: str, sites: tuple[str, ...], inner: dict[str, float] | None = None, **lattice: float
-) -> Crystal:
+def crystal(prototype: str, sites: tuple[str, ...], inner: dict[str, float] | None = None, **lattice: float) -> Crystal:
     return build_crystal(CrystalSpec(prototype, sites, lattice, inner=inner or {}))
 
 

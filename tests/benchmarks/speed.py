@@ -24,10 +24,7 @@ HERE = Path(__file__).resolve().parent
 sys.path[:0] = [str(HERE), str(HERE.parent), str(HERE.parent.parent)]
 CASE = HERE.parent.parent / "cases" / "kiln-lining-magnesia.toml"
 IMPORTS = "import numpy, scipy, ase, phonopy"
-PARTS = (
-    "import numpy, scipy.special, scipy.optimize, scipy.interpolate, ase.data, spglib;"
-    "from phonopy import Phonopy"
-)
+PARTS = "import numpy, scipy.special, scipy.optimize, scipy.interpolate, ase.data, spglib;from phonopy import Phonopy"
 REPEATS = 5
 
 
@@ -112,9 +109,8 @@ def against_handmade() -> dict[str, Any]:
 
 def sweep_of_exponents() -> dict[str, float]:
     """Compare a sweep of 15 exponents of a rock-salt Born crystal with one prediction."""
-    from thermex.exploration.sweep import sweep
-
     from thermex.case.reader import case_from_dict
+    from thermex.exploration.sweep import sweep
 
     case = case_from_dict(
         {

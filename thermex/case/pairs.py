@@ -94,9 +94,7 @@ def _parameters(walker: Walker, content: Mapping[str, Any], form: str, where: st
             default = OPTIONAL.get(form, {}).get(name)
             if default is None:
                 unit = PARAMETERS[name].unit
-                walker.fault(
-                    f"{where}.{short(name)}", "is missing", f"give {name}{f' in {unit}' if unit else ''}"
-                )
+                walker.fault(f"{where}.{short(name)}", "is missing", f"give {name}{f' in {unit}' if unit else ''}")
             else:
                 out[name] = default
     if form == "Mie" and "n" in out and "m" in out and out["n"] <= out["m"]:

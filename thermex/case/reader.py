@@ -53,9 +53,7 @@ def load_case(path: str | Path) -> Case:
     except OSError as error:
         raise InputError(f"cannot be read ({error.strerror})", where=name) from None
     except UnicodeDecodeError as error:
-        raise InputError(
-            f"is not UTF-8 text (byte {error.start})", where=name, fix="save it as UTF-8"
-        ) from None
+        raise InputError(f"is not UTF-8 text (byte {error.start})", where=name, fix="save it as UTF-8") from None
     except tomllib.TOMLDecodeError as error:
         raise InputError(f"is not valid TOML ({error})", where=name, fix="mend the line named") from None
     except (RecursionError, ValueError) as error:
@@ -116,9 +114,7 @@ def _crystal(walker: Walker, value: object, folder: Path) -> CrystalSpec:
         if "prototype" in found:
             walker.fault("crystal.file", "stands beside prototype", "keep one of the two")
     elif "prototype" not in found and isinstance(value, Mapping) and "prototype" not in value:
-        walker.fault(
-            "crystal.prototype", "is missing", 'name a structure type, such as "rock salt", or a file'
-        )
+        walker.fault("crystal.prototype", "is missing", 'name a structure type, such as "rock salt", or a file')
     for name, mass in found.get("masses", {}).items():
         if not 0.1 <= mass <= 1000.0:
             walker.fault(f"crystal.masses.{name}", f"is {mass:g}", "give a mass from 0.1 to 1000 u")
@@ -203,9 +199,7 @@ def _conditions(walker: Walker, content: Mapping[str, Any]) -> Conditions:
     expansion = _flat(walker, "expansion", content.get("expansion", {}))
     given = content.get("conditions")
     if "temperature" not in found and not (isinstance(given, Mapping) and "temperature" in given):
-        walker.fault(
-            "conditions.temperature", "is missing", "give a list in K, or { from = 0, to = 1000, step = 50 }"
-        )
+        walker.fault("conditions.temperature", "is missing", "give a list in K, or { from = 0, to = 1000, step = 50 }")
     return Conditions(
         found.get("temperature", ()),
         found.get("pressure", 0.0),
@@ -252,9 +246,7 @@ def _checked(walker: Walker, crystal: CrystalSpec, potential: PotentialSpec) -> 
         total += count * charge
         parts.append(f"{count} × {charge:+g} ({label})")
     if abs(total) > 1e-6:
-        walker.fault(
-            "potential.charges", f"do not cancel: {' + '.join(parts)} = {total:+g}", "make their sum zero"
-        )
+        walker.fault("potential.charges", f"do not cancel: {' + '.join(parts)} = {total:+g}", "make their sum zero")
     _missing_pairs(walker, tuple(present), potential)
     return potential
 

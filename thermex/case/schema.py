@@ -48,12 +48,8 @@ OPTIONAL: dict[str, dict[str, float]] = {"Buckingham": {"C": 0.0, "D": 0.0}}
 
 #: Unit, lower bound (excluded) and meaning of each parameter of a pair.
 PARAMETERS: dict[str, Key] = {
-    "A": Key(
-        "A", "number", "eV (Lennard-Jones: eV Å⁶)", "", "amplitude of the exponential", 0.0, strict=True
-    ),
-    "B": Key(
-        "B", "number", "eV Åⁿ (Lennard-Jones: eV Å¹²)", "", "amplitude of the inverse power", 0.0, strict=True
-    ),
+    "A": Key("A", "number", "eV (Lennard-Jones: eV Å⁶)", "", "amplitude of the exponential", 0.0, strict=True),
+    "B": Key("B", "number", "eV Åⁿ (Lennard-Jones: eV Å¹²)", "", "amplitude of the inverse power", 0.0, strict=True),
     "n": Key("n", "number", "", "", "repulsive exponent (Mie: the larger one)", 3.0, 60.0, strict=True),
     "m": Key("m", "number", "", "", "attractive exponent of the Mie form", 3.0, 60.0, strict=True),
     "rho": Key("rho", "number", "Å", "", "range of the exponential", 0.0, 10.0, strict=True),
@@ -72,9 +68,7 @@ TABLES: tuple[Table, ...] = (
         (
             Key("prototype", "text", "", "", "structure type; in its place: file"),
             Key("sites", "texts", "", "", "what sits on the sites of the prototype, in its order"),
-            Key(
-                "a", "number", "Å", "estimated", "where the search for the static minimum starts", 0.5, 200.0
-            ),
+            Key("a", "number", "Å", "estimated", "where the search for the static minimum starts", 0.5, 200.0),
             Key("b", "number", "Å", "", "the same for b, where it is free", 0.5, 200.0),
             Key("c", "number", "Å", "by the usual c/a", "the same for c, where it is free", 0.5, 200.0),
             Key("inner", "numbers by name", "", "usual values", "start values of free inner coordinates"),
@@ -123,9 +117,7 @@ TABLES: tuple[Table, ...] = (
         "potential.polarisable.X",
         (
             Key("shell_charge", "number", "e", "", "charge of the massless shell of ion X", -20.0, 20.0),
-            Key(
-                "spring_constant", "number", "eV/Å²", "", "harmonic core–shell spring", 0.0, 1e7, strict=True
-            ),
+            Key("spring_constant", "number", "eV/Å²", "", "harmonic core–shell spring", 0.0, 1e7, strict=True),
             Key("quartic_constant", "number", "eV/Å⁴", "0", "k₄ of k₄ d⁴/24", 0.0),
         ),
     ),
@@ -195,7 +187,5 @@ def schema_table() -> str:
         prefix = f"{entry.path}." if entry.path else ""
         for key in entry.keys:
             choices = f" ({', '.join(key.allowed)})" if key.allowed else ""
-            rows.append(
-                f"| `{prefix}{key.name}` | {key.kind} | {key.unit} | {key.default} | {key.meaning}{choices} |"
-            )
+            rows.append(f"| `{prefix}{key.name}` | {key.kind} | {key.unit} | {key.default} | {key.meaning}{choices} |")
     return "\n".join(rows)

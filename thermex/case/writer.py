@@ -27,10 +27,14 @@ def case_to_dict(case: Case) -> dict[str, Any]:
         crystal["inner"] = dict(spec.inner)
     if spec.masses:
         crystal["masses"] = dict(spec.masses)
-    potential: dict[str, Any] = {"calculator": case.potential.calculator} if case.potential.calculator else {
-        "charges": dict(case.potential.charges),
-        "pair": [_pair(p) for p in case.potential.pairs],
-    }
+    potential: dict[str, Any] = (
+        {"calculator": case.potential.calculator}
+        if case.potential.calculator
+        else {
+            "charges": dict(case.potential.charges),
+            "pair": [_pair(p) for p in case.potential.pairs],
+        }
+    )
     if case.potential.polarisable:
         potential["polarisable"] = {
             name: {
@@ -169,7 +173,5 @@ def case_hash(case: Case) -> str:
             digest.update(file.read_bytes())
     atoms: Any = case.crystal.atoms
     if atoms is not None:
-        digest.update(
-            repr((atoms.get_chemical_symbols(), atoms.positions.tolist(), atoms.cell.tolist())).encode()
-        )
+        digest.update(repr((atoms.get_chemical_symbols(), atoms.positions.tolist(), atoms.cell.tolist())).encode())
     return digest.hexdigest()

@@ -184,9 +184,7 @@ def largest_part(b: Budget) -> str:
 
 
 def _best_row(b: Budget) -> int:
-    known = np.isfinite(
-        np.stack([b.ln_gruneisen_ratio, b.ln_heat_capacity_ratio, b.ln_bulk_modulus_ratio])
-    ).sum(axis=0)
+    known = np.isfinite(np.stack([b.ln_gruneisen_ratio, b.ln_heat_capacity_ratio, b.ln_bulk_modulus_ratio])).sum(axis=0)
     score = known - 0.001 * np.abs(b.temperature_K - 300.0) / 300.0
     return int(np.argmax(score))
 
@@ -204,7 +202,9 @@ def _words(kelvin: Array, table: Array, missing: tuple[str, ...], kind: str) -> 
         ratio = np.expm1(-part if name in {"B_T", "the volume"} else part)
         side = "high" if ratio > 0 else "low"
         verb = "raises" if part > 0 else "lowers"
-        sentences.append(f"{name} is {abs(ratio):.0%} too {side}, and that alone {verb} α by {abs(np.expm1(part)):.0%}.")
+        sentences.append(
+            f"{name} is {abs(ratio):.0%} too {side}, and that alone {verb} α by {abs(np.expm1(part)):.0%}."
+        )
     if len({np.sign(v) for v in good.values()}) == 2:
         sentences.append("Errors of opposite sign cancel in part.")
     if abs(row[5]) > 0.01:

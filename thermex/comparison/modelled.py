@@ -57,7 +57,9 @@ def modelled(prediction: Prediction) -> Modelled:
     volume = best(p.volume_A3, c.volume_A3 if c else None)
     heat = best(p.heat_capacity_P_J_per_mol_K, c.heat_capacity_P_J_per_mol_K if c else None)
     lattice = {k: best(v, c.lattice_A[k] if c else None) for k, v in p.lattice_A.items()}
-    scale = np.where(p.alpha_linear_per_K > 0.0, alpha / np.where(p.alpha_linear_per_K != 0, p.alpha_linear_per_K, 1), 1.0)
+    scale = np.where(
+        p.alpha_linear_per_K > 0.0, alpha / np.where(p.alpha_linear_per_K != 0, p.alpha_linear_per_K, 1), 1.0
+    )
     axes = {k: v * scale for k, v in p.alpha_axis_per_K.items()}
     return Modelled(
         prediction=p,

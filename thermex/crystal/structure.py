@@ -77,9 +77,7 @@ def _frames(path: Path) -> list[Any]:
     return found if isinstance(found, list) else [found]
 
 
-def crystal_from_atoms(
-    atoms: object, masses: Mapping[str, float] | None = None, name: str = "atoms"
-) -> Crystal:
+def crystal_from_atoms(atoms: object, masses: Mapping[str, float] | None = None, name: str = "atoms") -> Crystal:
     """Reduce ASE Atoms to the primitive cell in the standard setting.
 
     Symmetry is found to within 0.005 Å and the positions are made exactly symmetric.
@@ -158,9 +156,7 @@ def _refuse_partial(atoms: Any, name: str) -> None:
     for share in shares:
         if len(share) != 1 or any(abs(float(value) - 1.0) > 1e-3 for value in share.values()):
             words = ", ".join(f"{symbol} {float(value):g}" for symbol, value in share.items())
-            raise InputError(
-                f"a site is partly occupied ({words})", where=name, fix="give an ordered structure"
-            )
+            raise InputError(f"a site is partly occupied ({words})", where=name, fix="give an ordered structure")
 
 
 def _without_repeats(atoms: Any, name: str) -> Any:

@@ -243,9 +243,7 @@ def symmetric_crystal(
     )
 
 
-def _refuse_asymmetric(
-    fractional: Array, symbols: tuple[str, ...], operations: tuple[Ints, Array], name: str
-) -> None:
+def _refuse_asymmetric(fractional: Array, symbols: tuple[str, ...], operations: tuple[Ints, Array], name: str) -> None:
     names = np.array(symbols)
     for rotation, translation in zip(*operations, strict=True):
         target, miss = _mapping(fractional, rotation, translation)

@@ -99,8 +99,8 @@ def match(
         found(float(value))
         progress("look over the range", k + 1, LOOKS)
     at = _root(found, values, target)
-    edges = [_root(found, values, target + s * uncertainty) for s in (-1.0, 1.0)] if uncertainty > 0.0 else [at, at]
-    edges = sorted((e for e in edges if e is not None), key=float)
+    ends = [_root(found, values, target + s * uncertainty) for s in (-1.0, 1.0)] if uncertainty > 0.0 else [at, at]
+    edges = sorted(e for e in ends if e is not None)
     answered = [(v, q) for v, q in sorted(seen.items()) if np.isfinite(q)]
     if not answered:
         raise InputError(

@@ -91,9 +91,7 @@ def instantaneous_from_elongation(temperature_K: ArrayLike, stretch: ArrayLike) 
     return instantaneous_coefficient(temperature_K, 1.0 + _array(stretch))
 
 
-def elongation_from_instantaneous(
-    temperature_K: ArrayLike, alpha_per_K: ArrayLike, reference_K: float
-) -> Array:
+def elongation_from_instantaneous(temperature_K: ArrayLike, alpha_per_K: ArrayLike, reference_K: float) -> Array:
     """Return ΔL/L₀ = exp(∫α dT from T₀ to T) − 1; NaN when T₀ lies outside the temperatures."""
     temperature = _array(temperature_K)
     integral = _spline(temperature, _array(alpha_per_K)).antiderivative()
@@ -121,9 +119,7 @@ def elongation_from_other_reference(stretch: ArrayLike, stretch_at_new_reference
     return result
 
 
-def mean_from_logarithmic(
-    temperature_K: ArrayLike, logarithmic_per_K: ArrayLike, reference_K: float
-) -> Array:
+def mean_from_logarithmic(temperature_K: ArrayLike, logarithmic_per_K: ArrayLike, reference_K: float) -> Array:
     """Return the mean coefficient from ln(L/L₀)/(T − T₀), as some X-ray papers report it, 1/K."""
     span = _array(temperature_K) - reference_K
     stretch = np.expm1(_array(logarithmic_per_K) * span)

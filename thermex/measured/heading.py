@@ -158,9 +158,7 @@ def _factor(block: Block, quantity: Quantity, faults: list[Fault]) -> float:
         return 1.0
     fits = ", ".join(quantity.examples)
     if not text:
-        faults.append(
-            Fault(f"line {block.line}", "the unit is not stated", f"'# unit: …' with one of: {fits}")
-        )
+        faults.append(Fault(f"line {block.line}", "the unit is not stated", f"'# unit: …' with one of: {fits}"))
         return 1.0
     factor = factor_of(quantity, text[:40])
     if factor is None:
@@ -170,9 +168,7 @@ def _factor(block: Block, quantity: Quantity, faults: list[Fault]) -> float:
     return factor
 
 
-def _reference(
-    block: Block, quantity: Quantity, kind: str, celsius: bool, faults: list[Fault]
-) -> float | None:
+def _reference(block: Block, quantity: Quantity, kind: str, celsius: bool, faults: list[Fault]) -> float | None:
     if kind not in quantity.kinds_with_reference:
         return None
     text = _text(block, "reference temperature")
@@ -185,9 +181,7 @@ def _reference(
     value = temperature_K(text, celsius)
     if value is None or not 0.0 <= value <= 10_000.0:
         what = f"{shown(text)} is not a temperature"
-        faults.append(
-            Fault(_where(block, "reference temperature"), what, "for example '293.15 K' or '20 °C'")
-        )
+        faults.append(Fault(_where(block, "reference temperature"), what, "for example '293.15 K' or '20 °C'"))
         return None
     return value
 
@@ -214,7 +208,5 @@ def _choice(block: Block, key: str, faults: list[Fault]) -> str:
 def _how(block: Block, faults: list[Fault]) -> str:
     text = _text(block, "how").lower() or "seen"
     if plain_word(text) not in {plain_word(word) for word in _HOW}:
-        faults.append(
-            Fault(_where(block, "how"), f"unknown value {shown(text)}", "one of: " + "; ".join(_HOW))
-        )
+        faults.append(Fault(_where(block, "how"), f"unknown value {shown(text)}", "one of: " + "; ".join(_HOW)))
     return text

@@ -114,9 +114,7 @@ def read_material(path: Path) -> Material:
     header = blocks[0].header if blocks else {}
     missing = [key for key in ("material", "formula", "structure") if key not in header]
     if missing:
-        raise InputError.of(
-            path.name, [Fault("line 1", f"'{key}' is not stated", f"'# {key}: …'") for key in missing]
-        )
+        raise InputError.of(path.name, [Fault("line 1", f"'{key}' is not stated", f"'# {key}: …'") for key in missing])
     also = header["also called"].text.split(",") if "also called" in header else []
     return Material(
         formula=header["formula"].text,

@@ -57,9 +57,7 @@ def value_at(series: Series, temperature_K: float) -> tuple[float, float] | None
         return float(values[above]), float(errors[above])
     if 0 < above < grid.size and 0.0 < grid[above] <= WIDEST_RATIO * grid[above - 1]:
         value = _interpolated(grid, values, temperature_K)
-        return value, float(
-            np.interp(temperature_K, grid[above - 1 : above + 1], errors[above - 1 : above + 1])
-        )
+        return value, float(np.interp(temperature_K, grid[above - 1 : above + 1], errors[above - 1 : above + 1]))
     nearest = int(np.argmin(np.abs(grid - temperature_K)))
     if abs(grid[nearest] - temperature_K) <= min(NEAR_K, NEAR_SHARE * grid[nearest]):
         return float(values[nearest]), float(errors[nearest])

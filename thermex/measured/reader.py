@@ -163,9 +163,7 @@ def _uncertainty(key: str, cell: str, value: float, heading: Heading | None, fau
     relative = cell.endswith("%")
     size = number(cell.removesuffix("%"))
     if size is None or size < 0.0:
-        faults.append(
-            Fault(key, f"{shown(cell)} is not an uncertainty", "a number from 0 up, or a percentage")
-        )
+        faults.append(Fault(key, f"{shown(cell)} is not an uncertainty", "a number from 0 up, or a percentage"))
         return float("nan")
     if relative:
         return abs(value) * size / 100.0

@@ -97,9 +97,7 @@ def folded_bonds(radial: RadialBonds, size: int, repeat: tuple[int, int, int]) -
     total = int(np.prod(shape))
     out = np.stack([np.bincount(flat, -matrices[:, k], minlength=total) for k in range(9)], axis=-1)
     out = out.reshape(*shape, 9)
-    own = np.stack(
-        [np.bincount(radial.bonds.first, matrices[:, k], minlength=size) for k in range(9)], axis=-1
-    )
+    own = np.stack([np.bincount(radial.bonds.first, matrices[:, k], minlength=size) for k in range(9)], axis=-1)
     for i in range(size):
         out[i, i, 0, 0, 0] += own[i]
     return np.ascontiguousarray(out.reshape(*shape, 3, 3))

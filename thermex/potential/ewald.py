@@ -189,9 +189,7 @@ def reciprocal_vectors(lattice: Array, eta: float, q: Array | None = None) -> Ar
     basis = 2.0 * pi * np.linalg.inv(lattice).T
     cutoff = 2.0 * SPAN * eta
     shift = np.zeros(3) if q is None else q
-    reach = np.ceil((cutoff + np.linalg.norm(shift)) * np.linalg.norm(lattice, axis=1) / (2.0 * pi)).astype(
-        int
-    )
+    reach = np.ceil((cutoff + np.linalg.norm(shift)) * np.linalg.norm(lattice, axis=1) / (2.0 * pi)).astype(int)
     ranges = [np.arange(-n, n + 1) for n in reach]
     grid = np.stack(np.meshgrid(*ranges, indexing="ij"), axis=-1).reshape(-1, 3)
     vectors = grid @ basis + shift

@@ -210,9 +210,7 @@ def _direct_response(model: PairModel, particles: Particles, gradient: Array, he
     force = radial.tension[:, None] * x
     gradient[6:] += (_gathered(bonds.second, force, m) - _gathered(bonds.first, force, m)).ravel() * 0.5
     _add_pairs(hessian, bonds, matrices, m)
-    mixed = np.einsum("nea,nab->neb", stretched, matrices) + np.einsum(
-        "n,eab,nb->nea", radial.tension, STRAINS, x
-    )
+    mixed = np.einsum("nea,nab->neb", stretched, matrices) + np.einsum("n,eab,nb->nea", radial.tension, STRAINS, x)
     block = 0.5 * (_gathered(bonds.second, mixed, m) - _gathered(bonds.first, mixed, m))
     flat = block.transpose(1, 0, 2).reshape(6, 3 * m)
     hessian[:6, 6:] += flat

@@ -148,9 +148,7 @@ class PairModel:
 
     def excluded_pairs(self, particles: Particles) -> Iterator[tuple[int, int]]:
         """Yield (core, shell) particle pairs of the same ion, which do not interact."""
-        cores = {
-            int(s): i for i, s in enumerate(particles.site) if not self.kinds[particles.kind[i]].is_shell
-        }
+        cores = {int(s): i for i, s in enumerate(particles.site) if not self.kinds[particles.kind[i]].is_shell}
         for i, k in enumerate(particles.kind):
             if self.kinds[k].is_shell:
                 yield cores[int(particles.site[i])], i

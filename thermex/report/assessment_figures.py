@@ -62,11 +62,11 @@ def plot_budget(a: Assessment, *, ax: Axes | None = None) -> Axes:
         axes.bar(x + (j - 1.5) * width, np.nan_to_num(values), width, color=LINES[j], label=short)
     axes.plot(x, b.ln_alpha_ratio[rows], "D", color=BLACK, markersize=6, label="sum: α")
     if np.abs(b.ln_method_ratio[rows]).max() > 1e-6:
-        axes.bar(x + 2.5 * width, b.ln_method_ratio[rows], width, color=GREY, label="method (removed)")
+        axes.bar(x + 2.6 * width, b.ln_method_ratio[rows], width, color=GREY, label="method, removed")
     axes.axhline(0.0, color=BLACK, linewidth=0.8)
     axes.set_xticks(x, [f"{b.temperature_K[k]:.0f}" for k in rows])
     dress(axes, x="Temperature (K)", y="Contribution to ln(α predicted/α measured)")
-    legend(axes)
+    axes.legend(loc="lower center", bbox_to_anchor=(0.5, 1.0), ncols=6, fontsize=8, frameon=False)
     return axes
 
 

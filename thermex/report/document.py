@@ -87,9 +87,7 @@ def prediction_document(prediction: Prediction, beside: Beside) -> dict[str, Any
 def _static(prediction: Prediction) -> dict[str, Any]:
     static, crystal = prediction.static, prediction.static.crystal
     found: dict[str, Any] = {"lattice_A": plain(static.lattice_A), "energy_eV": plain(static.energy_eV)}
-    found |= {
-        f.name: plain(getattr(static, f.name)) for f in fields(static) if f.name not in ("crystal", *found)
-    }
+    found |= {f.name: plain(getattr(static, f.name)) for f in fields(static) if f.name not in ("crystal", *found)}
     found["volume_A3"] = plain(crystal.volume)
     found["primitive_vectors_A"] = plain(crystal.lattice)
     found["fractional_positions"] = plain(crystal.fractional)
@@ -201,9 +199,7 @@ def csv_columns(prediction: Prediction, beside: Beside) -> dict[str, Any]:
     found |= {f"lattice_{axis}_A": values for axis, values in prediction.lattice_A.items()}
     if len(prediction.alpha_axis_per_K) > 1:
         found |= {f"alpha_{axis}_per_K": values for axis, values in prediction.alpha_axis_per_K.items()}
-        found |= {
-            f"alpha_mean_{axis}_per_K": values for axis, values in prediction.alpha_mean_axis_per_K.items()
-        }
+        found |= {f"alpha_mean_{axis}_per_K": values for axis, values in prediction.alpha_mean_axis_per_K.items()}
         found |= {f"elongation_{axis}": values for axis, values in prediction.elongation_axis.items()}
     found |= {name: getattr(prediction, name) for name in _ARRAYS[1:-1]}
     for k, symbol in enumerate(prediction.crystal.symbols):

@@ -93,9 +93,7 @@ def potential_body(prediction: Prediction) -> str:
         )
         if value
     ] or ["The user's own parameters."]
-    said.append(
-        "Charges: " + (", ".join(f"{s} {q:+g} e" for s, q in potential.charges.items()) or "none") + "."
-    )
+    said.append("Charges: " + (", ".join(f"{s} {q:+g} e" for s, q in potential.charges.items()) or "none") + ".")
     rows = [
         [
             "–".join(pair.between),
@@ -126,11 +124,7 @@ def record_body(record: Mapping[str, Any]) -> str:
         "platform": str,
         "libraries": lambda found: ", ".join(f"{name} {version}" for name, version in found.items()),
         "case_hash": str,
-        "input_sha256": lambda found: (
-            ", ".join(f"{name}: {digest}" for name, digest in found.items()) or "none"
-        ),
+        "input_sha256": lambda found: ", ".join(f"{name}: {digest}" for name, digest in found.items()) or "none",
     }
-    rows = [
-        [name.replace("_", " "), form(record[name])] for name, form in plain_words.items() if name in record
-    ]
+    rows = [[name.replace("_", " "), form(record[name])] for name, form in plain_words.items() if name in record]
     return word_table(("Item", "Value"), rows)

@@ -33,9 +33,7 @@ def plot_alpha(prediction: Prediction, measured: Beside | None = None, *, ax: Ax
     many = len(prediction.alpha_axis_per_K) > 1
     _rule_band(axes, prediction)
     _error_band(axes, kelvin, alpha, prediction.alpha_relative_error, BLUE)
-    axes.plot(
-        kelvin, alpha, color=BLUE, linewidth=1.8, label="quasi-harmonic" + (", mean of axes" if many else "")
-    )
+    axes.plot(kelvin, alpha, color=BLUE, linewidth=1.8, label="quasi-harmonic" + (", mean of axes" if many else ""))
     if many:
         for k, (axis, values) in enumerate(prediction.alpha_axis_per_K.items()):
             _axis_line(axes, kelvin, values * 1e6, axis, k)
@@ -47,9 +45,7 @@ def plot_alpha(prediction: Prediction, measured: Beside | None = None, *, ax: Ax
     return _finished(axes, prediction)
 
 
-def plot_elongation(
-    prediction: Prediction, measured: Beside | None = None, *, ax: Axes | None = None
-) -> Axes:
+def plot_elongation(prediction: Prediction, measured: Beside | None = None, *, ax: Axes | None = None) -> Axes:
     """Draw ΔL/L₀ from the reference temperature, per cent."""
     axes = ax if ax is not None else new_axes()
     kelvin = prediction.temperature_K
@@ -87,9 +83,7 @@ def plot_gruneisen(prediction: Prediction, measured: Beside | None = None, *, ax
     return _finished(axes, prediction)
 
 
-def plot_bulk_modulus(
-    prediction: Prediction, measured: Beside | None = None, *, ax: Axes | None = None
-) -> Axes:
+def plot_bulk_modulus(prediction: Prediction, measured: Beside | None = None, *, ax: Axes | None = None) -> Axes:
     """Draw the isothermal and the adiabatic bulk modulus, GPa."""
     axes = ax if ax is not None else new_axes()
     kelvin = prediction.temperature_K
@@ -112,9 +106,7 @@ def plot_bulk_modulus(
     return _finished(axes, prediction)
 
 
-def plot_heat_capacity(
-    prediction: Prediction, measured: Beside | None = None, *, ax: Axes | None = None
-) -> Axes:
+def plot_heat_capacity(prediction: Prediction, measured: Beside | None = None, *, ax: Axes | None = None) -> Axes:
     """Draw C_P and C_V, J/(mol K), per mole of formula units."""
     axes = ax if ax is not None else new_axes()
     kelvin = prediction.temperature_K
@@ -182,9 +174,7 @@ def _corrected(axes: Axes, prediction: Prediction) -> None:
     )
     beyond = np.where(kelvin >= _last(kelvin[inside]), alpha, np.nan)
     if np.isfinite(beyond).sum() > 1:
-        axes.plot(
-            kelvin, beyond, color=VERMILION, linestyle=":", linewidth=1.8, label="the same, extrapolated"
-        )
+        axes.plot(kelvin, beyond, color=VERMILION, linestyle=":", linewidth=1.8, label="the same, extrapolated")
 
 
 def _last(values: Array) -> float:
@@ -246,9 +236,7 @@ def _finished(axes: Axes, prediction: Prediction) -> Axes:
         axes.set_xlim(low, high)
     if prediction.branch_ends and prediction.valid_to_K < high:
         end = prediction.valid_to_K
-        axes.axvspan(
-            end, high, color="#BBBBBB", alpha=0.45, linewidth=0.0, label=f"past the branch end, {end:.0f} K"
-        )
+        axes.axvspan(end, high, color="#BBBBBB", alpha=0.45, linewidth=0.0, label=f"past the branch end, {end:.0f} K")
         axes.axvline(end, color=GREY, linewidth=1.0)
     legend(axes)
     return axes

@@ -72,9 +72,7 @@ def check_folder(folder: str | Path) -> None:
 
 def _plain(name: str) -> str:
     if name in ("", ".", "..") or Path(name).name != name or "\\" in name:
-        raise InputError(
-            f"{name!r} is not a plain file name", where="output", fix="give a name without folders"
-        )
+        raise InputError(f"{name!r} is not a plain file name", where="output", fix="give a name without folders")
     return name
 
 

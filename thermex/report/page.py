@@ -133,8 +133,7 @@ def word_table(heads: Sequence[str], rows: Sequence[Sequence[str]]) -> str:
 
 def _table(heads: Sequence[tuple[str, str]], rows: Sequence[Sequence[str]], kind: str) -> str:
     cells = "".join(
-        f'<th scope="col">{text(name)}{f"<small>{text(unit)}</small>" if unit else ""}</th>'
-        for name, unit in heads
+        f'<th scope="col">{text(name)}{f"<small>{text(unit)}</small>" if unit else ""}</th>' for name, unit in heads
     )
     body = "\n".join("<tr>" + "".join(f"<td>{text(cell)}</td>" for cell in row) + "</tr>" for row in rows)
     return (

@@ -82,9 +82,7 @@ def plot_crystal_energy(prediction: Prediction, *, ax: Axes | None = None) -> Ax
     distance = swing.static * np.exp(scale)
     parabola = 0.5 * curvature * (np.exp(scale) - 1.0) ** 2
     axes.plot(distance, energy, color=BLUE, linewidth=1.8, label="crystal")
-    axes.plot(
-        distance, parabola, color=GREY, linestyle="-.", linewidth=1.2, label="parabola of the same curvature"
-    )
+    axes.plot(distance, parabola, color=GREY, linestyle="-.", linewidth=1.2, label="parabola of the same curvature")
     _mark(axes, swing)
     dress(axes, x="Nearest-neighbour distance / Å", y="Energy above rest / eV per formula unit")
     axes.set_xlim(float(distance[0]), float(distance[-1]))
@@ -122,9 +120,7 @@ def _mark(axes: Axes, swing: Swing) -> None:
     if not np.isfinite(swing.temperature_K):
         return
     hot = f"{swing.temperature_K:.4g} K"
-    axes.axvline(
-        swing.mean, color=VERMILION, linestyle="--", linewidth=1.2, label=f"{hot}: mean {swing.mean:.3f} Å"
-    )
+    axes.axvline(swing.mean, color=VERMILION, linestyle="--", linewidth=1.2, label=f"{hot}: mean {swing.mean:.3f} Å")
     axes.axvspan(
         swing.mean - swing.spread,
         swing.mean + swing.spread,
@@ -157,9 +153,7 @@ def _members(model: PairModel, symbol: str) -> list[int]:
 
 def _acts(model: PairModel, pair: tuple[str, str]) -> bool:
     """Whether the pair has a term of its own, or is charged."""
-    named = {
-        frozenset((model.kinds[i.first].symbol, model.kinds[i.second].symbol)) for i in model.interactions
-    }
+    named = {frozenset((model.kinds[i.first].symbol, model.kinds[i.second].symbol)) for i in model.interactions}
     return frozenset(pair) in named or model.has_charges
 
 

@@ -47,9 +47,7 @@ ROWS = 24
 
 def prediction_page(prediction: Prediction, beside: Beside, record: Mapping[str, Any]) -> str:
     """Return the page as HTML."""
-    return page(
-        page_title(prediction), summary(prediction, beside), prediction_sections(prediction, beside, record)
-    )
+    return page(page_title(prediction), summary(prediction, beside), prediction_sections(prediction, beside, record))
 
 
 def page_title(prediction: Prediction) -> str:
@@ -86,9 +84,7 @@ def summary(prediction: Prediction, beside: Beside) -> list[str]:
 def _landmarks(prediction: Prediction, beside: Beside) -> list[int]:
     """Return up to three valid temperatures: near room temperature, and the ends that were measured."""
     kelvin = prediction.temperature_K
-    good = [
-        k for k in range(len(kelvin)) if np.isfinite(prediction.alpha_linear_per_K[k]) and kelvin[k] > 0.0
-    ]
+    good = [k for k in range(len(kelvin)) if np.isfinite(prediction.alpha_linear_per_K[k]) and kelvin[k] > 0.0]
     if not good:
         return []
     measured = beside.column("alpha_linear_per_K", len(kelvin)).value
@@ -240,9 +236,7 @@ def _diagonal(tensor: Any) -> str:
 
 
 def _pairs(prediction: Prediction) -> str:
-    spread = (
-        "Spread: root mean square along the bond of nearest neighbours, atoms taken as moving independently."
-    )
+    spread = "Spread: root mean square along the bond of nearest neighbours, atoms taken as moving independently."
     pictures = [
         _picture(
             plot_pair_curves(prediction),

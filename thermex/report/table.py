@@ -153,9 +153,7 @@ def _alpha_fields(prediction: Prediction, rows: Sequence[int]) -> list[Field]:
     error = np.where(prediction.alpha_linear_per_K == 0.0, np.nan, prediction.alpha_relative_error)
     found.append(Field("±", "%", _each(rows, error, error_percent)))
     if prediction.rule is not None:
-        found.append(
-            Field("rule", "%", _each(rows, prediction.rule.overestimate, lambda v: percent(v, 0)), rank=4)
-        )
+        found.append(Field("rule", "%", _each(rows, prediction.rule.overestimate, lambda v: percent(v, 0)), rank=4))
     if prediction.anharmonic is not None:
         corrected = prediction.anharmonic.alpha_linear_per_K
         found.append(Field("α corr.", "10⁻⁶/K", _corrected_cells(prediction, corrected, rows)))
@@ -228,9 +226,7 @@ def legend(prediction: Prediction, shown: Sequence[Field]) -> list[str]:
     if "α avg." in heads:
         said.append("α avg.: polycrystal average, a third of the volume coefficient.")
     if "rule" in heads and prediction.rule is not None:
-        said.append(
-            "rule: how much the quasi-harmonic α is expected to be too high. " + prediction.rule.words.strip()
-        )
+        said.append("rule: how much the quasi-harmonic α is expected to be too high. " + prediction.rule.words.strip())
     if "α corr." in heads and prediction.anharmonic is not None:
         said.append(_correction_words(prediction))
     if "diff." in heads:
@@ -258,9 +254,7 @@ def conventions(prediction: Prediction) -> list[str]:
         return []
     picked = sorted({good[round(step)] for step in np.linspace(0, len(good) - 1, 5)})
     start = temperature(prediction.reference_temperature_K)
-    length = ", ".join(
-        f"{fixed(100 * prediction.elongation[k], 3)} ({temperature(kelvin[k])} K)" for k in picked
-    )
+    length = ", ".join(f"{fixed(100 * prediction.elongation[k], 3)} ({temperature(kelvin[k])} K)" for k in picked)
     mean = ", ".join(f"{micro(prediction.alpha_mean_per_K[k])} ({temperature(kelvin[k])} K)" for k in picked)
     return [
         f"ΔL/L₀ from {start} K, %: {length}.",

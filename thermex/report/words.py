@@ -24,9 +24,7 @@ def heading(prediction: Prediction) -> list[str]:
 def potential_source(prediction: Prediction) -> list[str]:
     """Say where the potential comes from; nothing when it is the user's own."""
     potential = prediction.case.potential
-    said = [
-        part.rstrip(".") for part in (potential.published, potential.citation, potential.provenance) if part
-    ]
+    said = [part.rstrip(".") for part in (potential.published, potential.citation, potential.provenance) if part]
     return [f"Potential: {'; '.join(said)}."] if said else []
 
 
