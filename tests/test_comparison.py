@@ -178,3 +178,11 @@ def test_a_case_without_measured_values_is_told(capsys: pytest.CaptureFixture[st
     assert main(["assess", str(path)]) == 2
     assert "measured" in capsys.readouterr().err
     assert main(["assess"]) == 2
+
+
+@pytest.mark.literature
+def test_static_fit_is_noticed() -> None:
+    """LC85 MgO was fitted so that the static a equals the measured one at room temperature (4.2117 Å)."""
+    a = assessed("LC85 MgO")
+    assert a.static_fit is not None and "zero-point motion adds" in a.static_fit
+    assert assessed("LC85 MgO shell fit, rigid").static_fit is None

@@ -21,6 +21,7 @@ from thermex.lattice import supercells_for, uniform_lattice
 from thermex.potential.build import nearest_distance
 from thermex.potential.lattice_sums import Response, lattice_response
 from thermex.potential.model import PairModel
+from thermex.potential.terms import Exponential
 from thermex.prediction import EquationOfState, StaticLattice
 from thermex.relaxation import (
     Configuration,
@@ -66,10 +67,11 @@ def fixed_ground(case: Case, model: PairModel, crystal: Crystal) -> Ground:
     response = lattice_response(model, configuration.particles(model))
     static = _described(model, configuration, response, pressure, *bulk_modulus(energy, pressure))
     load = load_on(energy.crystal, pressure)
+    widening = range_factor(model, energy.crystal)
 
     def onward(temperature: Array, accuracy: float, progress: Progress) -> Travelled:
         return travel(
-            lambda span: uniform_lattice(model, energy, supercells_for(energy.crystal, span)),
+            lambda span: uniform_lattice(model, energy, supercells_for(energy.crystal, widening * span)),
             load,
             temperature,
             accuracy,
@@ -77,6 +79,13 @@ def fixed_ground(case: Case, model: PairModel, crystal: Crystal) -> Ground:
         )
 
     return Ground(configuration, static, _uniform_fits(energy, static), onward)
+
+
+def range_factor(model: PairModel, crystal: Crystal) -> float:
+    """Return by how much the supercell must grow for slowly falling exponentials (1 for ions, more for Morse)."""
+    spacing = (crystal.volume / crystal.size) ** (1.0 / 3.0)
+    ranges = [i.term.rho for i in model.short_ranged() if isinstance(i.term, Exponential)]
+    return float(np.clip(max(ranges, default=0.0) / spacing / 0.2, 1.0, 1.6))
 
 
 def relaxed_ground(case: Case, model: PairModel, crystal: Crystal, freedom: Freedom) -> Ground:

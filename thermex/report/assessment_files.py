@@ -144,6 +144,8 @@ def assessment_files(a: Assessment, command: Sequence[str]) -> dict[str, bytes]:
     """Return file name → content of everything written for an assessment."""
     from thermex.report.assessment_figures import plot_assessment, plot_budget, plot_sensitivities
     from thermex.report.assessment_page import assessment_page
+    from thermex.report.beside import beside_of
+    from thermex.report.figures import plot_alpha
     from thermex.report.style import png_bytes, svg_bytes
 
     record = run_record(a.case, command)
@@ -152,7 +154,8 @@ def assessment_files(a: Assessment, command: Sequence[str]) -> dict[str, bytes]:
         "assessment.csv": assessment_csv(a).encode(),
         "run.json": _json(record),
     }
-    figures = {"deviation": plot_assessment(a)}
+    prediction = a.modelled.prediction
+    figures = {"expansion": plot_alpha(prediction, beside_of(prediction)), "deviation": plot_assessment(a)}
     if a.budget is not None:
         figures["budget"] = plot_budget(a)
     if a.sensitivities:

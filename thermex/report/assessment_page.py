@@ -15,6 +15,10 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
 _WORDS = {
+    "expansion": (
+        "Predicted linear expansion coefficient against temperature with the measured points",
+        "Instantaneous linear coefficient; numbers in brackets are sources.",
+    ),
     "deviation": ("Relative deviation of the prediction from every measured series", "Band: the tolerance."),
     "budget": (
         "Bars of the Grüneisen parameter, heat capacity, bulk modulus and volume, by temperature",
