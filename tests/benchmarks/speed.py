@@ -107,12 +107,11 @@ def against_handmade() -> dict[str, Any]:
     }
 
 
-def sweep_of_exponents() -> dict[str, float]:
-    """Compare a sweep of 15 exponents of a rock-salt Born crystal with one prediction."""
+def born_case() -> Any:
+    """Return a rock-salt Born crystal, 0–1000 K, without the anharmonic correction."""
     from thermex.case.reader import case_from_dict
-    from thermex.exploration.sweep import sweep
 
-    case = case_from_dict(
+    return case_from_dict(
         {
             "crystal": {"prototype": "rock salt", "sites": ["Na", "Cl"], "a": 5.64},
             "potential": {
@@ -123,11 +122,81 @@ def sweep_of_exponents() -> dict[str, float]:
             "accuracy": {"anharmonic": "none"},
         }
     )
+
+
+def sweep_of_exponents() -> dict[str, float]:
+    """Compare 15 exponents with 15 predictions, and 60 points by two workers with 60 one after the other."""
+    from thermex.exploration.executor import local_workers
+    from thermex.exploration.sweep import sweep
+
+    case = born_case()
     one = best(lambda: computing(case))
     start = perf_counter()
-    sweep(case, "Na-Cl.n", np.linspace(6.0, 12.0, 15))
+    sweep(case, "Na-Cl.n", np.linspace(7.0, 12.0, 15))
     many = perf_counter() - start
-    return {"one prediction s": one, "15 points s": many, "ratio": many / one}
+    values = np.linspace(7.0, 12.0, 60)
+    start = perf_counter()
+    sweep(case, "Na-Cl.n", values)
+    serial = perf_counter() - start
+    start = perf_counter()
+    with local_workers(2) as workers:
+        sweep(case, "Na-Cl.n", values, executor=workers)
+    parallel = perf_counter() - start
+    return {
+        "one prediction, s": one,
+        "15 points, s": many,
+        "ratio 15 points / one": many / one,
+        "60 points serial, s": serial,
+        "60 points, two workers, s": parallel,
+        "ratio two workers / serial": parallel / serial,
+    }
+
+
+def calibration() -> dict[str, float]:
+    """Compare a fit of three parameters to 20 data with single predictions."""
+    from thermex.case.parameters import with_parameter
+    from thermex.exploration.calibrate import Datum, calibrate
+    from thermex.exploration.point import evaluate
+
+    case = plain_case()
+    true = with_parameter(with_parameter(case, "Mg-O.A", 1350.0), "Mg-O.rho", 0.297)
+    kelvin = (200.0, 400.0, 600.0, 800.0, 1000.0)
+    point = evaluate(replace(true, conditions=replace(true.conditions, temperatures=kelvin)))
+    shares = {
+        "alpha_linear_per_K": 0.01,
+        "lattice_A": 1e-4,
+        "bulk_modulus_T_GPa": 0.01,
+        "heat_capacity_P_J_per_mol_K": 0.01,
+    }
+    data = [Datum(q, t, point.at(q, t), share * point.at(q, t)) for t in kelvin for q, share in shares.items()]
+    one = best(lambda: computing(replace(case, conditions=replace(case.conditions, temperatures=kelvin))))
+    start = perf_counter()
+    fit = calibrate(case, ["Mg-O.A", "Mg-O.rho", "O-O.C"], data)
+    seconds = perf_counter() - start
+    return {"one prediction, s": one, "fit, s": seconds, "ratio": seconds / one, "predictions": float(fit.predictions)}
+
+
+def shells() -> dict[str, float]:
+    """Compare magnesia with and without a shell on oxygen."""
+    from thermex.case.published import case_from_published
+
+    grid = tuple(float(t) for t in range(0, 2001, 50))
+    cases = [case_from_published(n, grid) for n in ("LC85 MgO shell fit, rigid", "LC85 MgO shell")]
+    rigid, shell = (
+        best(lambda c=c: computing(replace(c, accuracy=replace(c.accuracy, anharmonic="none")))) for c in cases
+    )
+    return {"rigid, s": rigid, "with shell, s": shell, "ratio": shell / rigid}
+
+
+def corundum() -> dict[str, float]:
+    """Time corundum, 0–1500 K at 0.5 %."""
+    from thermex.case.published import case_from_published
+    from thermex.expansion import predict
+
+    case = case_from_published("GRIMES Al2O3", tuple(float(t) for t in range(0, 1501, 100)), accuracy=5e-3)
+    start = perf_counter()
+    predict(case)
+    return {"seconds": perf_counter() - start}
 
 
 def measure_all() -> dict[str, Any]:
@@ -157,10 +226,16 @@ def measure_all() -> dict[str, Any]:
         "peak memory, MB": peak_memory(),
         "against the hand-made way": against_handmade(),
     }
-    try:
-        rows["sweep of 15 exponents"] = sweep_of_exponents()
-    except Exception as error:  # a row must not stop the others
-        rows["sweep of 15 exponents"] = f"not measured: {error}"
+    for name, row in (
+        ("sweep", sweep_of_exponents),
+        ("calibration", calibration),
+        ("shells", shells),
+        ("corundum", corundum),
+    ):
+        try:
+            rows[name] = row()
+        except Exception as error:  # a row must not stop the others
+            rows[name] = f"not measured: {error}"
     rows["own peak memory, MB"] = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024
     return rows
 
