@@ -179,7 +179,7 @@ def refine_end(branch: Branch, load: Load, surface_on: Callable[[float, float], 
     low = max(branch.end_x - half, branch.x[0])
     surface = surface_on(low, high)
     ceiling = 1.5 * branch.end_K + 10.0
-    angle = np.linspace(0.0, np.pi, 33)
+    angle = np.linspace(0.0, np.pi, 25)
     x = 0.5 * (low + high) - 0.5 * (high - low) * np.cos(angle)
     t = temperature_at(surface, x, load, ceiling)
     good = np.isfinite(t)

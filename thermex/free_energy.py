@@ -7,7 +7,7 @@ and the entropy with its slopes, so that the equilibrium and α need no finite d
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Protocol
 
 import numpy as np
@@ -94,10 +94,15 @@ class Vibrations:
     """Shape (nq,), sum 1."""
     truncated: bool = False
     """True for the variant without the highest coefficients, from which the error is estimated."""
+    known: dict[bytes, oscillators.OscillatorSums] = field(default_factory=dict, compare=False, repr=False)
+    """Sums over modes already done, by temperatures; the variants of one set of frequencies share them."""
 
     def at(self, temperature: Array) -> Slice:
         """Fix the temperatures; see :class:`Term`."""
-        totals = oscillators.sums(self.frequencies, self.weights, temperature)
+        key = temperature.tobytes()
+        if key not in self.known:
+            self.known[key] = oscillators.sums(self.frequencies, self.weights, temperature)
+        totals = self.known[key]
         energy, entropy, heat = (self._coefficients(part) for part in (totals.energy, totals.entropy, totals.heat))
 
         def evaluate(x: Array) -> TermValues:

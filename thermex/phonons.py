@@ -8,6 +8,13 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
+from phonopy.harmonic.dynamical_matrix import (
+    diagonalize_dynamical_matrices,
+    get_dynamical_matrices_at_qpoints,
+    get_dynamical_matrix,
+)
+from phonopy.structure.atoms import PhonopyAtoms
+from phonopy.structure.cells import Primitive, get_supercell
 
 from thermex.constants import COULOMB, THZ_PER_ROOT
 from thermex.mesh import first_zone
@@ -23,6 +30,16 @@ Dynamics = Callable[[Array], Complex]
 #: A shell is set off from its core by this much (Å) in the cell given to phonopy, which tells atoms
 #: apart by position. It changes phases alone, and those are taken off again.
 _OFFSET = 1e-4
+
+
+class _HomeCell(Primitive):
+    """Phonopy's primitive cell without its search for permutations under translations.
+
+    They serve to complete force constants, and ours are complete from the start.
+    """
+
+    def _get_atomic_permutations(self, *supercell: Any) -> NDArray[np.int64]:
+        return np.zeros((0, sum(len(one) for one in supercell)), dtype=np.int64)
 
 
 @dataclass(frozen=True, slots=True)
@@ -52,8 +69,6 @@ class Supercell:
             Phys. Rev. B 55, 10355 (1997), doi:10.1103/PhysRevB.55.10355) carries the long-ranged
             part, with ε∞ = 1.
         """
-        from phonopy.harmonic.dynamical_matrix import get_dynamical_matrices_at_qpoints, get_dynamical_matrix
-
         compact = folded[:, self.owner, self.index[:, 0], self.index[:, 1], self.index[:, 2]]
         parameters = None
         if charges is not None:
@@ -77,9 +92,6 @@ class Supercell:
 
 def supercell(particles: Particles, repeat: tuple[int, int, int]) -> Supercell:
     """Build phonopy's supercell; centres (cores and shells) enter with unit mass."""
-    from phonopy.structure.atoms import PhonopyAtoms
-    from phonopy.structure.cells import get_primitive, get_supercell
-
     inverse = np.linalg.inv(particles.lattice)
     shift = _offsets(particles) @ inverse
     cell = PhonopyAtoms(
@@ -89,7 +101,7 @@ def supercell(particles: Particles, repeat: tuple[int, int, int]) -> Supercell:
         masses=np.ones(particles.size),
     )
     big = get_supercell(cell, np.diag(repeat))
-    primitive = get_primitive(big, np.diag(1.0 / np.array(repeat)))
+    primitive = _HomeCell(big, np.diag(1.0 / np.array(repeat)))
     owner = np.array([big.u2u_map[k] for k in big.s2u_map])
     cells = big.scaled_positions * np.array(repeat) - cell.scaled_positions[owner]
     index = np.rint(cells).astype(int) % np.array(repeat)
@@ -129,8 +141,6 @@ def displaced_dynamics(atoms: Any, calculator: Any, repeat: tuple[int, int, int]
     """
     from ase import Atoms
     from phonopy import Phonopy
-    from phonopy.harmonic.dynamical_matrix import get_dynamical_matrices_at_qpoints
-    from phonopy.structure.atoms import PhonopyAtoms
 
     cell = PhonopyAtoms(
         symbols=atoms.get_chemical_symbols(),
@@ -183,8 +193,6 @@ class MassWeighting:
 
 def frequencies(dynamical: Complex) -> Array:
     """Return frequencies in THz, shape (nq, 3n), ascending; imaginary ones as negative numbers."""
-    from phonopy.harmonic.dynamical_matrix import diagonalize_dynamical_matrices
-
     squared, _ = diagonalize_dynamical_matrices(np.ascontiguousarray(dynamical), with_eigenvectors=False)
     return np.asarray(np.sign(squared) * np.sqrt(np.abs(squared)) * THZ_PER_ROOT)
 

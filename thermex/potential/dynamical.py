@@ -12,6 +12,13 @@ from thermex.potential.model import PairModel, Particles
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
 
+#: The six products k_a k_b, and where each stands in the square matrix.
+_PRODUCTS = ((0, 0), (1, 1), (2, 2), (1, 2), (0, 2), (0, 1))
+_SQUARE = np.array([[0, 5, 4], [5, 1, 3], [4, 3, 2]])
+
+#: Largest number of phases e^{iG·(r_i − r_j)} held at a time.
+MOST_PHASES = 500_000
+
 
 def force_constants_at(model: PairModel, particles: Particles, q: Array) -> Complex:
     """Return Φ_ij(q) = Σ_R Φ_ij(0, R) e^{iq·(R + r_j − r_i)} by direct and Ewald sums.
@@ -30,15 +37,14 @@ def force_constants_at(model: PairModel, particles: Particles, q: Array) -> Comp
     wave = 2.0 * np.pi * np.atleast_2d(q) @ np.linalg.inv(particles.lattice).T
     out = _direct(radial, particles.size, wave)
     eta = ewald.split_parameter(particles.volume, particles.size)
+    m = particles.size
+    everywhere = np.concatenate([np.zeros((1, 3)), wave])
     for n, coupling in model.powers().items():
-        c = coupling[np.ix_(particles.kind, particles.kind)]
-        own = _reciprocal(n, c, eta, particles, np.zeros(3))
-        for index, k in enumerate(wave):
-            out[index] += _reciprocal(n, c, eta, particles, k)
-        m = particles.size
-        row = own.reshape(m, 3, m, 3).sum(axis=2).real
+        found = _reciprocal(n, coupling[np.ix_(particles.kind, particles.kind)], eta, particles, everywhere)
+        out += found[1:]
+        own = found[0].reshape(m, 3, m, 3).sum(axis=2).real
         for i in range(m):
-            out[:, 3 * i : 3 * i + 3, 3 * i : 3 * i + 3] -= row[i]
+            out[:, 3 * i : 3 * i + 3, 3 * i : 3 * i + 3] -= own[i]
     return out
 
 
@@ -64,18 +70,34 @@ def _direct(radial: RadialBonds, m: int, wave: Array) -> Complex:
 
 
 def _reciprocal(n: float, c: Array, eta: float, particles: Particles, wave: Array) -> Complex:
-    """Reciprocal part of one power at one q without its self term, shape (3m, 3m)."""
-    k = ewald.reciprocal_vectors(particles.lattice, eta, wave)
-    squared = np.einsum("ga,ga->g", k, k)
-    keep = squared > 1e-24
-    k, squared = k[keep], squared[keep]
-    g = ewald.kernel_value(n, eta, squared) / particles.volume
-    m = particles.size
-    # the sum over R of e^{iq·(R + r_j − r_i)} leaves k = q + G with the phase e^{iG·(r_i − r_j)}
-    phases = np.exp(-1j * (k - wave) @ particles.positions.T)
-    waves = (phases[:, :, None] * k[:, None, :]).reshape(len(k), 3 * m)
-    outer = (waves.conj() * g[:, None]).T @ waves
-    return np.asarray((outer.reshape(m, 3, m, 3) * c[:, None, :, None]).reshape(3 * m, 3 * m))
+    """Reciprocal part of one power without its self term, shape (nq, 3m, 3m).
+
+    The sum over R of e^{iq·(R + r_j − r_i)} leaves Σ_G g(|q + G|) (q + G)(q + G)ᵀ e^{iG·(r_i − r_j)}, whose
+    phases serve every q at once.
+    """
+    vectors = ewald.reciprocal_vectors(particles.lattice, eta, float(np.linalg.norm(wave, axis=1).max()))
+    first, second = np.triu_indices(particles.size)
+    out = np.zeros((len(wave) * len(_PRODUCTS), len(first)), dtype=complex)
+    for part in np.array_split(vectors, 1 + len(vectors) * len(first) // MOST_PHASES):
+        weights = _weighted_products(n, eta, wave[:, None, :] + part) / particles.volume
+        single = np.exp(1j * part @ particles.positions.T)
+        out += weights @ (single[:, first] * single[:, second].conj())
+    blocks = (out * c[first, second]).reshape(len(wave), len(_PRODUCTS), len(first))[:, _SQUARE]
+    whole = np.empty((len(wave), particles.size, 3, particles.size, 3), dtype=complex)
+    # advanced indices come first: (pairs, nq, 3, 3)
+    whole[:, second, :, first] = blocks.conj().transpose(3, 0, 1, 2)
+    whole[:, first, :, second] = blocks.transpose(3, 0, 1, 2)
+    return whole.reshape(len(wave), 3 * particles.size, 3 * particles.size)
+
+
+def _weighted_products(n: float, eta: float, k: Array) -> Array:
+    """Return g(|k|) k_a k_b for the six a ≤ b, shape (nq·6, nG), of k (nq, nG, 3); 0 at k = 0 and far out."""
+    squared = np.einsum("qga,qga->qg", k, k)
+    near = (squared > 1e-24) & (squared < (2.0 * ewald.SPAN * eta) ** 2)
+    g = np.zeros_like(squared)
+    g[near] = ewald.kernel_value(n, eta, squared[near])
+    products = np.stack([g * k[..., a] * k[..., b] for a, b in _PRODUCTS], axis=1)
+    return np.asarray(products.reshape(-1, k.shape[1]))
 
 
 def direct_force_constants(radial: RadialBonds, size: int, wave: Array) -> Complex:
@@ -120,6 +142,7 @@ def supercell_force_constants(model: PairModel, particles: Particles, repeat: tu
     (l1, l2, l3).
     """
     q = commensurate_points(repeat)
+    q -= np.rint(q)
     m = particles.size
     half, mirror = _half(repeat)
     values = force_constants_at(model, particles, q[half])

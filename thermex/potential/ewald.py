@@ -15,7 +15,7 @@ B. R. A. Nijboer and F. W. de Wette, Physica 23, 309 (1957), doi:10.1016/S0031-8
 from __future__ import annotations
 
 from dataclasses import dataclass
-from math import gamma, pi, sqrt
+from math import factorial, gamma, pi, sqrt
 
 import numpy as np
 from numpy.typing import NDArray
@@ -71,10 +71,12 @@ def smooth_part(n: float, eta: float, r: Array) -> tuple[Array, Array, Array]:
     interact (a core and its own shell).
     """
     y = (eta * np.asarray(r, dtype=float)) ** 2
+    if not y.size:
+        return y, y, y
     value, first, second = np.zeros_like(y), np.zeros_like(y), np.zeros_like(y)
     # ψ = ηⁿ/Γ(n/2) Σ_k (−y)^k / (k! (k + n/2)): converges fast for the small distances met here
     for k in range(60):
-        c = (-1.0) ** k / (special.factorial(k) * (k + n / 2.0))
+        c = (-1.0) ** k / (factorial(k) * (k + n / 2.0))
         value += c * y**k
         if k >= 1:
             first += c * 2.0 * k * y ** (k - 1)
@@ -106,6 +108,8 @@ def _by_recurrence(p: float, x: Array) -> Array:
     start = p - steps
     if start == 1.0:
         value = special.exp1(x)
+    elif start == 0.5:
+        value = sqrt(pi) * special.erfc(np.sqrt(x)) / np.sqrt(x)
     else:
         value = special.gammaincc(1.0 - start, x) * gamma(1.0 - start) * x ** (start - 1.0)
     for k in range(steps):
@@ -178,20 +182,19 @@ def self_energy(n: float, eta: float) -> float:
     return float(eta**n / gamma(n / 2.0 + 1.0))
 
 
-def reciprocal_vectors(lattice: Array, eta: float, q: Array | None = None) -> Array:
-    """Return all G + q with |G + q| < 2·SPAN·η, shape (nG, 3), 1/Å; G = 0 is included.
+def reciprocal_vectors(lattice: Array, eta: float, margin: float = 0.0) -> Array:
+    """Return all G with |G| < 2·SPAN·η + margin, shape (nG, 3), 1/Å; G = 0 is included.
 
     Parameters
     ----------
-    q
-        Shape (3,), 1/Å (Cartesian, with the factor 2π).
+    margin
+        Length of the longest wave vector to be added to them, 1/Å (with the factor 2π).
     """
     basis = 2.0 * pi * np.linalg.inv(lattice).T
-    cutoff = 2.0 * SPAN * eta
-    shift = np.zeros(3) if q is None else q
-    reach = np.ceil((cutoff + np.linalg.norm(shift)) * np.linalg.norm(lattice, axis=1) / (2.0 * pi)).astype(int)
+    cutoff = 2.0 * SPAN * eta + margin
+    reach = np.ceil(cutoff * np.linalg.norm(lattice, axis=1) / (2.0 * pi)).astype(int)
     ranges = [np.arange(-n, n + 1) for n in reach]
     grid = np.stack(np.meshgrid(*ranges, indexing="ij"), axis=-1).reshape(-1, 3)
-    vectors = grid @ basis + shift
+    vectors = grid @ basis
     chosen: Array = vectors[np.einsum("gk,gk->g", vectors, vectors) < cutoff**2]
     return chosen
