@@ -133,7 +133,8 @@ def sample_modes(travelled: Travelled) -> SampledModes:
     crystal = lattice.crystal
     mesh = graded(crystal, divisions_for(crystal, 12 if crystal.size <= 2 else 8 if crystal.size < 8 else 4))
     sphere = long_wave_sphere(crystal, 18 if crystal.size < 8 else 10 if crystal.size <= LARGE else 4)
-    motion, sound_motion = lattice.motion(mesh.points), lattice.motion(sphere.points)
+    motion = lattice.motion(np.concatenate([mesh.points, sphere.points]))
+    size = len(mesh.points)
     log_volume = states.x @ travelled.load.trace
     low, high = float(log_volume.min()), float(log_volume.max())
     margin = 0.05 * (high - low) + 1e-5
@@ -145,9 +146,10 @@ def sample_modes(travelled: Travelled) -> SampledModes:
     limit: modes.LongWaveLimit | None = None
     for point in box.grid[:, 0]:
         x = np.array([np.interp(point, log_volume[order], column[order]) for column in states.x.T])
-        warm.append(modes.on_mesh(modes.cell_modes(motion, x, direction), mesh))
+        both = modes.cell_modes(motion, x, direction)
+        warm.append(modes.on_mesh(both, mesh, slice(0, size)))
         if limit is None:
-            sound = modes.on_mesh(modes.cell_modes(sound_motion, x, direction), sphere)
+            sound = modes.on_mesh(both, sphere, slice(size, None))
             limit = modes.long_wave_limit(sound, sphere, float(travelled.load.volume(x[None])[0]))
     assert limit is not None
     return SampledModes(mesh, box, warm, limit)

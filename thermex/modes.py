@@ -50,9 +50,10 @@ def cell_modes(motion: Motion, x: Array, direction: Array) -> CellModes:
     return CellModes(raw, -0.5 * slope / squared, per_atom)
 
 
-def on_mesh(modes: CellModes, mesh: Mesh) -> CellModes:
-    """Return the modes at the points of a mesh with long waves scaled back."""
-    return CellModes(long_wave_scaled(modes.frequencies, mesh), modes.gruneisen, modes.amplitudes)
+def on_mesh(modes: CellModes, mesh: Mesh, part: slice) -> CellModes:
+    """Return the modes of one mesh among the points computed, long waves scaled back."""
+    scaled = long_wave_scaled(modes.frequencies[part], mesh)
+    return CellModes(scaled, modes.gruneisen[part], modes.amplitudes[part])
 
 
 def average_gruneisen(modes: CellModes, weights: Array, kelvin: float) -> float:

@@ -32,7 +32,7 @@ Dynamics = Callable[[Array], Complex]
 _OFFSET = 1e-4
 
 
-class _HomeCell(Primitive):
+class _HomeCell(Primitive):  # type: ignore[misc]
     """Phonopy's primitive cell without its search for permutations under translations.
 
     They serve to complete force constants, and ours are complete from the start.

@@ -25,6 +25,16 @@ for _k, (_a, _b) in enumerate(VOIGT):
     STRAINS[_k, _a, _b] += 0.5
     STRAINS[_k, _b, _a] += 0.5
 
+_PAIR_A, _PAIR_B = (np.array([pair[k] for pair in VOIGT]) for k in (0, 1))
+
+#: Where the Voigt product stands in the square matrix.
+_SQUARE = np.array([[0, 5, 4], [5, 1, 3], [4, 3, 2]])
+
+#: The ten products x_a x_b x_c as (Voigt product, c), and where each of the 6×3 stands among them.
+_TRIPLES = sorted({tuple(sorted((*pair, c))) for pair in VOIGT for c in range(3)})
+_CUBIC = np.array([(_SQUARE[a, b], c) for a, b, c in _TRIPLES]).T
+_CUBE = np.array([[_TRIPLES.index(tuple(sorted((*pair, c)))) for c in range(3)] for pair in VOIGT])
+
 
 @dataclass(frozen=True, slots=True)
 class Response:
@@ -193,46 +203,48 @@ def lattice_response(model: PairModel, particles: Particles) -> Response:
 
 
 def _direct_response(model: PairModel, particles: Particles, gradient: Array, hessian: Array) -> float:
+    """Add the directly summed pairs and return their energy.
+
+    Bonds come in both directions, so sums over odd functions of x need be gathered at one end alone.
+    """
     radial = radial_bonds(model, particles)
     bonds, x = radial.bonds, radial.bonds.vector
-    matrices = pair_matrices(radial)
-    stretched = np.einsum("eab,nb->nea", STRAINS, x)
-    along = np.einsum("nea,na->ne", stretched, x)
-    gradient[:6] += 0.5 * radial.tension @ along
-    hessian[:6, :6] += 0.5 * np.einsum("nea,nab,nfb->ef", stretched, matrices, stretched, optimize=True)
-    # second derivative of x itself: (ε_a ε_b + ε_b ε_a)/2 x
-    second = np.einsum("eac,fcb->efab", STRAINS, STRAINS)
-    second = 0.5 * (second + second.swapaxes(0, 1))
-    moment = np.einsum("n,na,nb->ab", radial.tension, x, x)
-    hessian[:6, :6] += 0.5 * np.einsum("efab,ab->ef", second, moment)
-    # displacements: dx = u_j − u_i
     m = particles.size
-    force = radial.tension[:, None] * x
-    gradient[6:] += (_gathered(bonds.second, force, m) - _gathered(bonds.first, force, m)).ravel() * 0.5
-    _add_pairs(hessian, bonds, matrices, m)
-    mixed = np.einsum("nea,nab->neb", stretched, matrices) + np.einsum("n,eab,nb->nea", radial.tension, STRAINS, x)
-    block = 0.5 * (_gathered(bonds.second, mixed, m) - _gathered(bonds.first, mixed, m))
-    flat = block.transpose(1, 0, 2).reshape(6, 3 * m)
+    products = x[:, _PAIR_A] * x[:, _PAIR_B]  # xx, yy, zz, yz, xz, xy: xᵀ ε x of each Voigt strain
+    pulled = radial.curvature[:, None] * products
+    moment = radial.tension @ products
+    gradient[:6] += 0.5 * moment
+    # x moves by εx + ½ε²x: the second derivative of ½|x|² is that of ½xᵀ(1 + 2ε + 2ε²)x
+    square = np.einsum("eac,fcb->efab", STRAINS, STRAINS)
+    hessian[:6, :6] += 0.5 * pulled.T @ products
+    hessian[:6, :6] += np.einsum("efab,ab->ef", square + square.swapaxes(0, 1), 0.5 * moment[_SQUARE])
+    # displacements: dx = u_j − u_i
+    force = _gathered(bonds.first, radial.tension[:, None] * x, m)
+    gradient[6:] -= force.ravel()
+    _add_pairs(hessian, bonds, np.column_stack([pulled, radial.tension]), m)
+    cubic = _gathered(bonds.first, pulled[:, _CUBIC[0]] * x[:, _CUBIC[1]], m)[:, _CUBE]
+    mixed = cubic.transpose(1, 0, 2) + 2.0 * np.einsum("eab,ib->eia", STRAINS, force)
+    flat = -mixed.reshape(6, 3 * m)
     hessian[:6, 6:] += flat
     hessian[6:, :6] += flat.T
     return float(0.5 * radial.energy.sum())
 
 
 def _gathered(index: NDArray[np.int64], values: Array, size: int) -> Array:
-    """Sum rows of values (nb, …) by index, shape (size, …)."""
-    flat = values.reshape(len(values), -1)
-    columns = [np.bincount(index, flat[:, k], minlength=size) for k in range(flat.shape[1])]
-    return np.asarray(np.stack(columns, axis=-1).reshape(size, *values.shape[1:]), dtype=float)
+    """Sum rows of values (nb, k) by index, shape (size, k)."""
+    columns = [np.bincount(index, values[:, k], minlength=size) for k in range(values.shape[1])]
+    return np.asarray(np.stack(columns, axis=-1), dtype=float)
 
 
-def _add_pairs(hessian: Array, bonds: Bonds, matrices: Array, m: int) -> None:
-    """Add Σ ½ (u_j − u_i)Φ(u_j − u_i) over ordered pairs to the displacement block."""
-    pairs = _gathered(bonds.first * m + bonds.second, matrices, m * m).reshape(m, m, 3, 3)
-    pairs = pairs + pairs.transpose(1, 0, 2, 3)
-    blocks = -0.5 * pairs
-    rows = 0.5 * pairs.sum(axis=1)
-    for i in range(m):
-        blocks[i, i] += rows[i]
+def _add_pairs(hessian: Array, bonds: Bonds, radial: Array, m: int) -> None:
+    """Add ½ Σ (u_j − u_i)Φ(u_j − u_i) over ordered pairs to the displacement block.
+
+    ``radial`` has seven columns: curvature times the six products of x, and the tension.
+    """
+    sums = _gathered(bonds.first * m + bonds.second, radial, m * m)
+    pairs = (sums[:, _SQUARE] + sums[:, 6, None, None] * np.eye(3)).reshape(m, m, 3, 3)
+    blocks = -pairs
+    blocks[np.arange(m), np.arange(m)] += pairs.sum(axis=1)
     hessian[6:, 6:] += blocks.transpose(0, 2, 1, 3).reshape(3 * m, 3 * m)
 
 
