@@ -68,3 +68,8 @@ def error_percent(fraction: float) -> str:
 def temperature(value: float) -> str:
     """Return a temperature in K without needless decimals."""
     return ABSENT if not math.isfinite(value) else f"{value:.6g}"
+
+
+def rounded(value: float) -> str:
+    """Return a computed temperature in K, whole from 100 K on, with three digits below."""
+    return fixed(value, 0) if abs(value) >= 100.0 else significant(value, 3)

@@ -38,6 +38,7 @@ from thermex.report.page import (
     word_table,
 )
 from thermex.report.pair_figures import plot_crystal_energy, plot_pair_curves
+from thermex.report.response import response_rows
 from thermex.report.style import svg_bytes
 from thermex.report.table import best_alpha, chosen_rows, fields, legend
 from thermex.report.words import heading, limits, validity
@@ -220,19 +221,8 @@ def _vibrations(prediction: Prediction) -> str:
 
 
 def _zone_centre(prediction: Prediction) -> str:
-    centre = prediction.zone_centre
-    if centre is None:
-        return ""
-    names = ("transverse", "longitudinal, q along z")
-    found = (centre.transverse_THz, centre.longitudinal_THz)
-    rows = [[name, ", ".join(fixed(v, 2) for v in values)] for name, values in zip(names, found, strict=True)]
-    rows.append(["dielectric tensor, electronic (diagonal)", _diagonal(centre.dielectric_high)])
-    rows.append(["dielectric tensor, static (diagonal)", _diagonal(centre.dielectric_static)])
-    return word_table(("At the zone centre of the crystal at rest", "THz, or dimensionless"), rows)
-
-
-def _diagonal(tensor: Any) -> str:
-    return ", ".join(fixed(float(v), 3) for v in np.diag(tensor))
+    rows = [list(row) for row in response_rows(prediction)]
+    return word_table(("Response of the crystal at rest", "value"), rows) if rows else ""
 
 
 def _pairs(prediction: Prediction) -> str:

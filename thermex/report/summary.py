@@ -7,7 +7,7 @@ import numpy as np
 from thermex.prediction import Prediction
 from thermex.report.beside import Beside
 from thermex.report.caution import CAUTION
-from thermex.report.numbers import error_percent, micro, temperature
+from thermex.report.numbers import error_percent, micro, rounded, temperature
 from thermex.report.page import number_table, text
 from thermex.report.table import chosen_rows, fields
 from thermex.report.words import heading, validity
@@ -26,7 +26,7 @@ def summary_line(prediction: Prediction) -> str:
         error = error_percent(float(prediction.alpha_relative_error[k]))
         alpha = micro(float(prediction.alpha_linear_per_K[k]))
         said.append(f"α({temperature(kelvin[k])} K) = {alpha}·10⁻⁶/K ± {error} % (numerical)")
-    said.append(f"valid to {temperature(float(f'{prediction.valid_to_K:.5g}'))} K")
+    said.append(f"valid to {rounded(prediction.valid_to_K)} K")
     return f"<Prediction of {crystal.formula}, {crystal.name or 'from a file'}: {'; '.join(said)}>"
 
 

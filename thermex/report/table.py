@@ -12,7 +12,8 @@ from numpy.typing import NDArray
 from thermex.prediction import Prediction
 from thermex.report.beside import Beside, Column
 from thermex.report.caution import CAUTION
-from thermex.report.numbers import ABSENT, error_percent, fixed, micro, percent, significant, temperature
+from thermex.report.numbers import ABSENT, error_percent, fixed, micro, percent, rounded, significant, temperature
+from thermex.report.response import response_lines
 from thermex.report.words import heading, limits
 
 Array = NDArray[np.float64]
@@ -61,11 +62,17 @@ def prediction_text(prediction: Prediction, beside: Beside, *, width: int = 100,
         *wrapped(conventions(prediction), width),
         *_sources(beside, shown, width),
         "",
+        *_section(wrapped(response_lines(prediction), width)),
         *wrapped(limits(prediction), width),
         "",
         *wrapped([CAUTION], width),
     ]
     return "\n".join(parts) + "\n"
+
+
+def _section(lines: list[str]) -> list[str]:
+    """Return lines with an empty one after them, or nothing."""
+    return [*lines, ""] if lines else []
 
 
 def chosen_rows(prediction: Prediction, beside: Beside, most: int) -> list[int]:
@@ -239,10 +246,10 @@ def legend(prediction: Prediction, shown: Sequence[Field]) -> list[str]:
 def _correction_words(prediction: Prediction) -> str:
     assert prediction.anharmonic is not None
     kind, start = prediction.anharmonic.kind, prediction.anharmonic.starts_K
-    words = f"α corr.: with the anharmonic correction ({kind}), from {temperature(start)} K on"
+    words = f"α corr.: with the anharmonic correction ({kind}), from {rounded(start)} K on"
     end = prediction.anharmonic.extrapolated_from_K
     if np.isfinite(end) and end < prediction.temperature_K[-1]:
-        words += f"; *: extrapolated (above {temperature(end)} K)"
+        words += f"; *: extrapolated (above {rounded(end)} K)"
     return words + "."
 
 

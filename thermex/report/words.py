@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from thermex.prediction import Prediction
-from thermex.report.numbers import fixed, percent, significant, temperature
+from thermex.report.numbers import fixed, percent, rounded, significant, temperature
 
 
 def heading(prediction: Prediction) -> list[str]:
@@ -35,7 +35,7 @@ def limits(prediction: Prediction) -> list[str]:
 
 def validity(prediction: Prediction) -> str:
     """Say up to which temperature the result holds, and why not further."""
-    end, reason = temperature(float(f"{prediction.valid_to_K:.5g}")), prediction.valid_to_reason.rstrip(".")
+    end, reason = rounded(prediction.valid_to_K), prediction.valid_to_reason.rstrip(".")
     if not prediction.branch_ends:
         return f"Holds up to {end} K: {reason}."
     text = f"Ends at {end} K: {reason}. No number is given beyond"
