@@ -19,6 +19,7 @@ from thermex.crystal.crystal import Crystal
 from thermex.errors import InputError
 from thermex.free_energy import Vibrations
 from thermex.ground import Ground, calculator_ground, fixed_ground, relaxed_ground
+from thermex.memory import refuse_oversized
 from thermex.mesh import Mesh, divisions_for, graded, long_wave_sphere
 from thermex.potential.bonds import find_bonds
 from thermex.potential.build import pair_model
@@ -60,6 +61,8 @@ def predict(case: Case, *, progress: Progress = _silent) -> Prediction:
     ------
     InputError
         What the case asks for does not fit together, or the start lies in a collapse.
+    ResourceError
+        The job would not fit into the memory of the machine; told before it starts.
     NoAnswerError
         No static minimum, an unstable crystal, or no temperature below the branch end.
     """
@@ -88,6 +91,7 @@ def ground_of(case: Case, crystal: Crystal) -> tuple[Ground, PairModel | None]:
         return calculator_ground(case, crystal, calculator), None
     model = pair_model(case.potential, crystal)
     refuse_collapsed(model, crystal, case.source)
+    refuse_oversized(model, crystal, case.accuracy.alpha, case.source)
     freedom = freedom_of(model, crystal)
     if len(crystal.axes) == 1 and len(freedom.inner) == 0:
         return fixed_ground(case, model, crystal), model

@@ -16,6 +16,7 @@ from thermex import convergence, phonons
 from thermex.branch import refuse_unstable
 from thermex.chebyshev import Box
 from thermex.convergence import Solution
+from thermex.crystal.crystal import Crystal
 from thermex.equilibrium import Load, refine
 from thermex.errors import BranchEndError, UnstableCrystalError
 from thermex.free_energy import FreeEnergy, Vibrations
@@ -181,11 +182,11 @@ def _tight(x: Array) -> Array:
     return np.column_stack([low - margin, high + margin])
 
 
-def meshes_for(lattice: BoxLattice, accuracy: float) -> tuple[int, ...]:
+def meshes_for(crystal: Crystal, accuracy: float) -> tuple[int, ...]:
     """Return the meshes tried one after the other: coarser for large cells, whose zone is small."""
-    if lattice.crystal.size > LARGE:
+    if crystal.size > LARGE:
         return (4, 6)
-    if lattice.crystal.size > 12:
+    if crystal.size > 12:
         return (6, 8)
     return (10, 12, 16) if accuracy > 2e-3 else (12, 16)
 
@@ -197,7 +198,7 @@ def _final(lattice: BoxLattice, box: Box, load: Load, wanted: Array, path: Path,
     judged = wanted >= min(100.0, 0.5 * float(wanted.max()))
     if lattice.supercells.short and path.lost:
         judged &= wanted < 0.95 * path.temperature[-1]
-    meshes = meshes_for(lattice, accuracy)
+    meshes = meshes_for(lattice.crystal, accuracy)
     for divisions in meshes:
         surface = convergence.build(lattice, box, divisions_for(lattice.crystal, divisions), 1)
         solution = convergence.solve(surface, load, wanted, start, convergence.MESH_SHARE)

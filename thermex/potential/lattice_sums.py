@@ -79,8 +79,7 @@ class BondTable:
 def bond_table(model: PairModel, particles: Particles) -> BondTable:
     """List the directly summed pairs: short-ranged terms and the real parts of all powers."""
     eta = ewald.split_parameter(particles.volume, particles.size)
-    cutoff = _cutoff(model, eta)
-    bonds = find_bonds(particles.lattice, particles.positions, cutoff)
+    bonds = find_bonds(particles.lattice, particles.positions, direct_range(model, particles))
     bonds = _without(bonds, list(model.excluded_pairs(particles)))
     groups = tuple(_groups(model, particles, bonds, bonds.length, eta))
     return BondTable(bonds, groups, _own_shell_bonds(model, particles, eta))
@@ -138,7 +137,9 @@ def _joined(one: RadialBonds, two: RadialBonds) -> RadialBonds:
     )
 
 
-def _cutoff(model: PairModel, eta: float) -> float:
+def direct_range(model: PairModel, particles: Particles) -> float:
+    """Return the distance up to which pairs are summed directly, Å."""
+    eta = ewald.split_parameter(particles.volume, particles.size)
     short = [i.term.reach() for i in model.short_ranged() if np.isfinite(i.term.reach())]
     long = [ewald.SPAN / eta] if model.powers() else []
     nearest = [2.5 / eta] if any(i.nearest_only for i in model.interactions) else []
