@@ -12,7 +12,7 @@ from pathlib import Path
 import pytest
 
 from tests.synthetic import invented_prediction, measured_beside
-from thermex.cli import main
+from thermex.cli import COMMANDS, main
 from thermex.commands.interruption import Interrupted
 from thermex.commands.progress import ProgressLine, duration, progress_on, progress_text, silent
 from thermex.errors import Fault, InputError, ThermexWarning, UnstableCrystalError
@@ -175,7 +175,7 @@ def test_wrong_words_are_status_two(words: list[str], capsys: pytest.CaptureFixt
     assert "Traceback" not in capsys.readouterr().err
 
 
-@pytest.mark.parametrize("words", [["--help"], ["predict", "--help"], ["--version"]])
+@pytest.mark.parametrize("words", [["--help"], ["--version"], *([name, "--help"] for name in COMMANDS)])
 def test_help_and_version(words: list[str], capsys: pytest.CaptureFixture[str]) -> None:
     assert main(words) == 0
     assert "thermex" in capsys.readouterr().out

@@ -24,6 +24,9 @@ WINDOW, POINTS = 0.03, 7
 #: Largest ln(scale) above the static lattice that is looked at.
 FARTHEST = 0.25
 
+#: Why a branch ends, where it does not end by B_T → 0.
+IMAGINARY = "phonons turn imaginary"
+
 
 @dataclass(frozen=True, slots=True)
 class Branch:
@@ -101,7 +104,7 @@ def survey(lattice: Lattice, load: Load, highest_K: float) -> Branch:
             limit = _first_imaginary(sampler, low, high)
             high = limit - 1e-6
             if high - low < 1e-4:
-                return _ended(xs, ts, limit, "phonons turn imaginary")
+                return _ended(xs, ts, limit, IMAGINARY)
             found = [sampler.all_frequencies(x) for x in Box(np.array([[low, high]]), (POINTS,)).grid[:, 0]]
         box = Box(np.array([[low, high]]), (POINTS,))
         surface = FreeEnergy((lattice.static_over(box), _vibrations(sampler, box, found)))
@@ -125,7 +128,7 @@ def survey(lattice: Lattice, load: Load, highest_K: float) -> Branch:
             xs.append(float(x))
             ts.append(float(t))
         if np.isfinite(limit):
-            return _ended(xs, ts, limit, "phonons turn imaginary")
+            return _ended(xs, ts, limit, IMAGINARY)
         low = high
     reason = f"the branch was followed to {np.exp(FARTHEST) - 1:.0%} linear expansion"
     return Branch(np.array(xs), np.array(ts), False, xs[-1], ts[-1], reason, limit)

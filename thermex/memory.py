@@ -51,7 +51,8 @@ def refuse_oversized(model: PairModel, crystal: Crystal, accuracy: float, where:
     needed, there = expected_bytes(model, crystal, accuracy), available_bytes()
     if needed > there:
         raise ResourceError(
-            f"a cell of {crystal.size} atoms needs about {needed / 1e9:.1f} GB of memory, and {there / 1e9:.1f} GB are free",
+            f"a cell of {crystal.size} atoms needs about {needed / 1e9:.1f} GB of memory, "
+            f"and {there / 1e9:.1f} GB are free",
             where=f"{where}: crystal" if where else "crystal",
             fix="take a smaller cell, or a machine with more memory",
         )

@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from thermex import convergence, phonons
-from thermex.branch import refuse_unstable
+from thermex.branch import IMAGINARY, refuse_unstable
 from thermex.chebyshev import Box
 from thermex.convergence import Solution
 from thermex.crystal.crystal import Crystal
@@ -137,7 +137,7 @@ def _search(lattice: BoxLattice, load: Load, highest: float) -> tuple[Box, Path,
         if found.min() < 0.0:
             middle = window.mean(axis=1)
             window = np.column_stack([window[:, 0], middle + 0.2 * (window[:, 1] - middle)])
-            stop = "phonons turn imaginary"
+            stop = IMAGINARY
             continue
         surface = FreeEnergy((lattice.static_over(box), Vibrations(box, found, mesh.weights)))
         path = follow(surface, load, grid, np.zeros(d))

@@ -13,9 +13,11 @@ from numpy.typing import NDArray
 from thermex import convergence
 from thermex.anharmonic.correction import COLDEST, Quasiharmonic, correct, minimum, solved_states
 from thermex.anharmonic.leading_order import applicable, leading_order
-from thermex.anharmonic.rule import anharmonic_rule
+from thermex.anharmonic.rule import WORDS_IMAGINARY, anharmonic_rule, no_rule
 from thermex.anharmonic.sampled_term import SampledFit
 from thermex.anharmonic.sampling import Outlook, Plan, Sampled, sample
+from thermex.anharmonic.trusted import trusted
+from thermex.branch import IMAGINARY
 from thermex.case.case import Accuracy
 from thermex.chebyshev import Box
 from thermex.errors import InputError, UnstableCrystalError
@@ -84,7 +86,8 @@ def method_error(
         Sampling was asked for and the harmonic crystal is unstable in the window.
     """
     base = quasiharmonic(travelled, asked, effective_K, debye_K)
-    rule = anharmonic_rule(base.effective, base.end_K)
+    imaginary = travelled.ends and travelled.reason == IMAGINARY
+    rule = no_rule(base.effective, WORDS_IMAGINARY) if imaginary else anharmonic_rule(base.effective, base.end_K)
     if accuracy.anharmonic == "none":
         return Method(rule, None, ())
     reason = applicable(base.crystal, model) if model else "it needs an analytic pair potential"
@@ -93,14 +96,22 @@ def method_error(
     if reason or model is None:
         return Method(rule, None, (f"No anharmonic correction: {reason}.",))
     if accuracy.anharmonic == "sampled":
-        return Method(rule, sampled(base, model, accuracy, travelled, progress, executor), ())
+        return _checked(rule, sampled(base, model, accuracy, travelled, progress, executor), asked)
     try:
         progress("anharmonicity", 0, 1)
         found = leading_order(model, base.crystal, base.surface.box.window)
     except UnstableCrystalError as error:
         return Method(rule, None, (f"No anharmonic correction: {error.what}.",))
     progress("anharmonicity", 1, 1)
-    return Method(rule, correct(base, found, "leading order"), ())
+    return _checked(rule, correct(base, found, "leading order"), asked)
+
+
+def _checked(rule: AnharmonicRule, found: Anharmonic, asked: Array) -> Method:
+    """Keep the corrected values that are worth printing; only what is to be said when none is."""
+    kept = trusted(found, asked)
+    if np.isfinite(kept.alpha_linear_per_K).any():
+        return Method(rule, kept, ())
+    return Method(rule, None, kept.notes)
 
 
 def quasiharmonic(travelled: Travelled, asked: Array, effective_K: Array, debye_K: float) -> Quasiharmonic:

@@ -26,6 +26,10 @@ WORDS = (
 
 WORDS_WITHOUT_END = "No rule: the end of the quasi-harmonic branch was not reached, so t = T_eff/T_end is not known."
 
+WORDS_IMAGINARY = (
+    "No rule: the branch ends where phonons turn imaginary, and the rule counts from the temperature at which B_T → 0."
+)
+
 
 def overestimate(t: Array, factor: float = FACTOR) -> Array:
     """Return the expected relative overestimate of α, factor · t/(1 − t)^0.8; NaN for t ≥ 1.
@@ -53,9 +57,14 @@ def anharmonic_rule(effective_K: Array, end_K: float) -> AnharmonicRule:
     """
     effective = np.asarray(effective_K, dtype=float)
     if not np.isfinite(end_K):
-        nothing = np.full(effective.shape, np.nan)
-        return AnharmonicRule(nothing, nothing, nothing, nothing, float("inf"), WORDS_WITHOUT_END)
+        return no_rule(effective, WORDS_WITHOUT_END)
     t = effective / end_K
     return AnharmonicRule(
         t, overestimate(t), overestimate(t, SCATTER[0]), overestimate(t, SCATTER[1]), float(end_K), WORDS
     )
+
+
+def no_rule(effective_K: Array, words: str) -> AnharmonicRule:
+    """Return the rule without a number at any temperature, and the reason in words."""
+    nothing = np.full(np.shape(effective_K), np.nan)
+    return AnharmonicRule(nothing, nothing, nothing, nothing, float("inf"), words)

@@ -41,7 +41,7 @@ class PublishedSet:
     @property
     def from_memory(self) -> bool:
         """Whether any of its digits were recalled and not looked up."""
-        return "MEMORY" in self.potential.provenance
+        return "from memory" in self.potential.provenance.lower()
 
 
 @cache

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import json
-from collections.abc import Mapping
+from collections.abc import Collection, Mapping
 from typing import Any
 
 from thermex.case.case import Case, PairSpec
@@ -32,7 +32,7 @@ def case_to_dict(case: Case) -> dict[str, Any]:
         if case.potential.calculator
         else {
             "charges": dict(case.potential.charges),
-            "pair": [_pair(p) for p in case.potential.pairs],
+            "pair": [_pair(p, case.potential.polarisable) for p in case.potential.pairs],
         }
     )
     if case.potential.polarisable:
@@ -49,11 +49,10 @@ def case_to_dict(case: Case) -> dict[str, Any]:
         potential["covariance"] = {"parameters": list(names), "matrix": [list(row) for row in matrix]}
     accuracy: dict[str, Any] = {
         "alpha": case.accuracy.alpha,
+        "anharmonic": case.accuracy.anharmonic,
         "sampled_error": case.accuracy.sampled_error,
         "seed": case.accuracy.seed,
     }
-    if case.accuracy.anharmonic != "default":
-        accuracy["anharmonic"] = case.accuracy.anharmonic
     out: dict[str, Any] = {
         "title": case.title,
         "crystal": crystal,
@@ -75,7 +74,7 @@ def case_to_dict(case: Case) -> dict[str, Any]:
     return out
 
 
-def _pair(pair: PairSpec) -> dict[str, Any]:
+def _pair(pair: PairSpec, polarisable: Collection[str]) -> dict[str, Any]:
     out: dict[str, Any] = {"between": list(pair.between), "form": pair.form, **pair.parameters}
     if pair.static_distance is not None:
         out["static_distance"] = pair.static_distance
@@ -84,7 +83,8 @@ def _pair(pair: PairSpec) -> dict[str, Any]:
     out["reach"] = pair.reach
     if pair.file is not None:
         out["file"] = pair.file.name
-    out["centres"] = list(pair.centres)
+    if set(pair.between) & set(polarisable):
+        out["centres"] = list(pair.centres)
     return out
 
 

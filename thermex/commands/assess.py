@@ -28,7 +28,7 @@ def add_parser(subparsers: Any, common: argparse.ArgumentParser) -> None:
     parser.add_argument("cases", metavar="CASE", type=Path, nargs="*", help="case files (TOML)")
     parser.add_argument("--material", metavar="NAME", help="every published potential shipped for this material")
     parser.add_argument("--to", type=float, default=1000.0, metavar="T", help="with --material: up to T, K (1000)")
-    parser.add_argument("--tolerance", type=float, default=10.0, metavar="PERCENT", help="rms deviation, % (10)")
+    parser.add_argument("--tolerance", type=float, default=10.0, metavar="PERCENT", help="rms deviation, %% (10)")
     parser.add_argument("--strict", action="store_true", help="exit status 1 when the tolerance is failed")
     parser.add_argument("--quick", action="store_true", help="leave the sensitivities out")
     parser.add_argument(

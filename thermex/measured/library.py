@@ -131,7 +131,7 @@ def _short(name: str) -> str:
 
 def _nearest(name: str) -> str:
     known = {plain_word(word): material for material in materials() for word in _names(material)}
-    near = difflib.get_close_matches(plain_word(name[:60]), list(known), 3, 0.6)
+    near = difflib.get_close_matches(plain_word(name[:60]), list(known), 3, 0.7)
     if near:
         found = dict.fromkeys(f"{known[word].formula} ({known[word].name})" for word in near)
         return "did you mean " + " or ".join(found) + "?"

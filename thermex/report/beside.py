@@ -9,9 +9,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from thermex.case.case import Case
+from thermex.errors import InputError
 from thermex.measured import Material, best_measured, load_material, load_series_file
 from thermex.measured.lookup import trust_order
 from thermex.prediction import Prediction
+from thermex.report.doubts import doubts
 
 Array = NDArray[np.float64]
 
@@ -51,6 +53,8 @@ class Beside:
     columns: dict[str, Column] = field(default_factory=dict)
     """By quantity (the names of the JSON)."""
     curves: tuple[Curve, ...] = ()
+    doubts: tuple[str, ...] = ()
+    """What the measured values say against the prediction as a whole."""
 
     def column(self, quantity: str, size: int) -> Column:
         """Return one column, empty when the quantity was not measured."""
@@ -99,7 +103,7 @@ def beside_of(prediction: Prediction) -> Beside:
         if any(found):
             value = np.array([f.value if f else np.nan for f in found])
             columns[name] = Column(value, tuple(f.source_number if f else 0 for f in found))
-    return Beside(material.sources, columns, tuple(_curves(material, prediction)))
+    return Beside(material.sources, columns, tuple(_curves(material, prediction)), doubts(prediction, material))
 
 
 def material_of(case: Case) -> Material | None:
@@ -117,7 +121,11 @@ def material_of(case: Case) -> Material | None:
     if asked.material is None:
         structure = case.crystal.prototype or ""
         return Material("", "own values", (), structure, own) if own else None
-    material = load_material(asked.material)
+    try:
+        material = load_material(asked.material)
+    except InputError as error:
+        where = f"{case.source}: measured.material" if case.source else "measured.material"
+        raise InputError(error.what, where=where, fix=error.fix) from None
     first = max((series.source_number for series in own), default=0)
     shifted = [replace(series, source_number=series.source_number + first) for series in material.series]
     return replace(material, series=(*own, *shifted))

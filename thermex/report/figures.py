@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from thermex.prediction import Prediction
 from thermex.report.beside import Beside, Curve
-from thermex.report.style import BLUE, DASHES, GREY, LINES, MARKS, SKY, VERMILION, dress, legend, new_axes
+from thermex.report.style import BLUE, DASHES, GREY, LINES, MARKS, ORANGE, SKY, VERMILION, dress, legend, new_axes
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -97,8 +97,13 @@ def plot_bulk_modulus(prediction: Prediction, measured: Beside | None = None, *,
         label="$B_S$, quasi-harmonic",
     )
     if prediction.anharmonic is not None:
-        values, label = prediction.anharmonic.bulk_modulus_T_GPa, f"$B_T$, {prediction.anharmonic.kind}"
-        axes.plot(kelvin, values, color=VERMILION, linestyle="--", linewidth=1.6, label=label)
+        found = prediction.anharmonic
+        label = f"$B_T$, {found.kind}"
+        axes.plot(kelvin, found.bulk_modulus_T_GPa, color=VERMILION, linestyle="--", linewidth=1.6, label=label)
+        # B_S = B_T (1 + α_V γ T)
+        adiabatic = found.bulk_modulus_T_GPa * (1.0 + found.alpha_volume_per_K * found.gruneisen * kelvin)
+        label = f"$B_S$, {found.kind}"
+        axes.plot(kelvin, adiabatic, color=ORANGE, linestyle=":", linewidth=1.6, label=label)
     curves = _draw_curves(axes, measured, "bulk_modulus_T_GPa", 1.0, prefix="$B_T$ ")
     _draw_curves(axes, measured, "bulk_modulus_S_GPa", 1.0, prefix="$B_S$ ", first_mark=len(curves))
     dress(axes, x=KELVIN, y="Bulk modulus / GPa")
@@ -147,9 +152,9 @@ def _rule_band(axes: Axes, prediction: Prediction) -> None:
     low, high = alpha / (1.0 + rule.high), alpha / (1.0 + rule.low)
     axes.fill_between(
         prediction.temperature_K,
-        low,
+        np.maximum(low, 0.0),
         high,
-        color="#E69F00",
+        color=ORANGE,
         alpha=0.25,
         linewidth=0.0,
         label="expected without the approximation (rule)",

@@ -60,11 +60,11 @@ def prediction_sections(prediction: Prediction, beside: Beside, record: Mapping[
     """Return the sections of the page in their order."""
     return [
         Section("Expansion", _expansion(prediction, beside)),
-        Section("What limits this result", listing(limits(prediction))),
+        Section("What limits this result", listing([*beside.doubts, *limits(prediction)])),
         Section("The three conventions", _conventions(prediction)),
         Section("Stiffness, heat and the Grüneisen parameter", _thermodynamics(prediction, beside)),
         Section("Vibrations", _vibrations(prediction)),
-        Section("What makes this crystal expand", _pairs(prediction)),
+        Section("Pair energies and thermal spread", _pairs(prediction)),
         Section("Numerical error", convergence_body(prediction)),
         Section("Crystal at rest", static_body(prediction)),
         Section("Potential", potential_body(prediction)),
@@ -146,7 +146,7 @@ def _ends(prediction: Prediction) -> str:
 def _conventions(prediction: Prediction) -> str:
     start = temperature(prediction.reference_temperature_K)
     said = [
-        "Laboratories report expansion in three ways that differ by 5 to 40 %; compare like with like.",
+        "Instantaneous and mean coefficient and ΔL/L₀ of the quasi-harmonic answer: compare like with like.",
         f"Reference temperature T₀ = {start} K.",
     ]
     names = list(prediction.alpha_axis_per_K) if len(prediction.alpha_axis_per_K) > 1 else []
@@ -238,8 +238,7 @@ def _pairs(prediction: Prediction) -> str:
             plot_crystal_energy(prediction),
             "Energy of the whole crystal against its nearest-neighbour distance, beside a parabola of the same "
             "curvature",
-            "All pairs summed, the cell scaled uniformly. Where the well is flatter outside than inside, bonds weaken "
-            "as the cell grows and heat pushes the mean distance out.",
+            "All pairs summed, the cell scaled uniformly; dashed, the parabola of the same curvature.",
         ),
     ]
     return gallery(pictures)

@@ -63,7 +63,7 @@ def prediction_text(prediction: Prediction, beside: Beside, *, width: int = 100,
         *_sources(beside, shown, width),
         "",
         *_section(wrapped(response_lines(prediction), width)),
-        *wrapped(limits(prediction), width),
+        *wrapped([*beside.doubts, *limits(prediction)], width),
         "",
         *wrapped([CAUTION], width),
     ]
@@ -159,7 +159,7 @@ def _alpha_fields(prediction: Prediction, rows: Sequence[int]) -> list[Field]:
         ] + [Field("α avg.", "10⁻⁶/K", found[0].cells)]
     error = np.where(prediction.alpha_linear_per_K == 0.0, np.nan, prediction.alpha_relative_error)
     found.append(Field("±", "%", _each(rows, error, error_percent)))
-    if prediction.rule is not None:
+    if prediction.rule is not None and np.isfinite(prediction.rule.overestimate).any():
         found.append(Field("rule", "%", _each(rows, prediction.rule.overestimate, lambda v: percent(v, 0)), rank=4))
     if prediction.anharmonic is not None:
         corrected = prediction.anharmonic.alpha_linear_per_K
@@ -232,8 +232,8 @@ def legend(prediction: Prediction, shown: Sequence[Field]) -> list[str]:
     said = ["α: instantaneous linear coefficient (1/L)(dL/dT); ±: its numerical error alone, relative."]
     if "α avg." in heads:
         said.append("α avg.: polycrystal average, a third of the volume coefficient.")
-    if "rule" in heads and prediction.rule is not None:
-        said.append("rule: how much the quasi-harmonic α is expected to be too high. " + prediction.rule.words.strip())
+    if prediction.rule is not None:
+        said.append(_rule_words(prediction, "rule" in heads))
     if "α corr." in heads and prediction.anharmonic is not None:
         said.append(_correction_words(prediction))
     if "diff." in heads:
@@ -241,6 +241,17 @@ def legend(prediction: Prediction, shown: Sequence[Field]) -> list[str]:
         said.append(f"diff.: {which} over α meas., minus one. [n]: number of the source below.")
     said.append("C_P per mole of formula units.")
     return said
+
+
+def _rule_words(prediction: Prediction, shown: bool) -> str:
+    """Return the rule in one sentence; the page and the files hold all of its words."""
+    assert prediction.rule is not None
+    if not shown:
+        return prediction.rule.words.strip()
+    return (
+        "rule: how much the quasi-harmonic α is expected to be too high, 0.22 t/(1 − t)^0.8 with t = T_eff/T_end; "
+        "fitted to simulations of Lennard-Jones, rock-salt and CsCl-type crystals alone."
+    )
 
 
 def _correction_words(prediction: Prediction) -> str:
@@ -264,9 +275,27 @@ def conventions(prediction: Prediction) -> list[str]:
     length = ", ".join(f"{fixed(100 * prediction.elongation[k], 3)} ({temperature(kelvin[k])} K)" for k in picked)
     mean = ", ".join(f"{micro(prediction.alpha_mean_per_K[k])} ({temperature(kelvin[k])} K)" for k in picked)
     return [
-        f"ΔL/L₀ from {start} K, %: {length}.",
-        f"Mean coefficient between {start} K and T, 10⁻⁶/K: {mean}.",
+        f"Quasi-harmonic ΔL/L₀ from {start} K, %: {length}.",
+        f"Quasi-harmonic mean coefficient between {start} K and T, 10⁻⁶/K: {mean}.",
+        *_corrected_conventions(prediction, picked),
     ]
+
+
+def _corrected_conventions(prediction: Prediction, picked: Sequence[int]) -> list[str]:
+    """Return ΔL/L₀ with the anharmonic correction, where T₀ and T both have one."""
+    found = prediction.anharmonic
+    if found is None:
+        return []
+    kelvin, length = prediction.temperature_K, np.cbrt(found.volume_A3)
+    good = np.isfinite(length)
+    start = prediction.reference_temperature_K
+    if good.sum() < 4 or not kelvin[good][0] <= start <= kelvin[good][-1]:
+        return []
+    from scipy.interpolate import PchipInterpolator
+
+    origin = float(PchipInterpolator(kelvin[good], length[good])(start))
+    said = [f"{fixed(100 * (length[k] / origin - 1.0), 3)} ({temperature(kelvin[k])} K)" for k in picked if good[k]]
+    return [f"The same with the anharmonic correction, ΔL/L₀, %: {', '.join(said)}."] if said else []
 
 
 def _sources(beside: Beside, shown: Sequence[Field], width: int) -> list[str]:
