@@ -114,8 +114,12 @@ def draw(rows: dict[str, dict[str, float]], file: Path) -> None:
         ax.plot(atoms, [row[key] for row in rows.values()], "o-", color="#0072B2")
         ax.set(xlabel="Atoms in the primitive cell", ylabel=unit, xscale="log", yscale="log")
         ax.grid(alpha=0.4)
-        for name, row in rows.items():
-            ax.annotate(name.split(",")[0], (row["atoms"], row[key]), textcoords="offset points", xytext=(4, -10))
+        ax.set_xticks([1, 2, 5, 10, 20, 50, 100], labels=["1", "2", "5", "10", "20", "50", "100"])
+        ax.set_xticks([], minor=True)
+        ax.margins(0.12)
+        for k, (name, row) in enumerate(rows.items()):
+            place = {"textcoords": "offset points", "xytext": (0, 7 if k % 2 else -13), "ha": "center", "fontsize": 8}
+            ax.annotate(name.split(",")[0], (row["atoms"], row[key]), **place)
     figure.savefig(file, dpi=150)
 
 
