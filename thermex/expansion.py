@@ -135,7 +135,7 @@ def sample_modes(travelled: Travelled) -> SampledModes:
     """Compute modes with their γ and amplitudes at a few cells along the branch (one for large cells)."""
     lattice, states = travelled.lattice, travelled.solution.states
     crystal = lattice.crystal
-    mesh = graded(crystal, divisions_for(crystal, 12 if crystal.size <= 2 else 8 if crystal.size < 8 else 4))
+    mesh = graded(crystal, divisions_for(crystal, 10 if crystal.size <= 2 else 8 if crystal.size < 8 else 4))
     sphere = long_wave_sphere(crystal, 18 if crystal.size < 8 else 10 if crystal.size <= LARGE else 4)
     motion = lattice.motion(np.concatenate([mesh.points, sphere.points]))
     size = len(mesh.points)
