@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from thermex.case.case import PotentialSpec
 from thermex.errors import InputError, PolarisationError
-from thermex.potential.build import pair_model
+from thermex.potential.build import closed_model
 from thermex.potential.lattice_sums import Response, lattice_response
 from thermex.potential.model import PairModel, Particles
 
@@ -25,7 +25,8 @@ class PairCalculator(Calculator):  # type: ignore[misc]
     Parameters
     ----------
     potential
-        The potential of a case (``load_case(...).potential``), or a pair model.
+        The potential of a case (``load_case(...).potential``), or a pair model. Where an amplitude is
+        given by ``static_distance``, the pair model built on the crystal at rest is needed.
     """
 
     implemented_properties = ["energy", "forces", "stress", "free_energy"]  # noqa: RUF012
@@ -51,9 +52,7 @@ class PairCalculator(Calculator):  # type: ignore[misc]
     def _model(self) -> PairModel:
         if isinstance(self._potential, PairModel):
             return self._potential
-        from thermex.crystal.structure import crystal_from_atoms
-
-        return pair_model(self._potential, crystal_from_atoms(self.atoms))
+        return closed_model(self._potential, self.atoms.get_chemical_symbols())
 
 
 def _place(model: PairModel, atoms: Any) -> Particles:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from dataclasses import replace
 
 import numpy as np
@@ -32,16 +32,9 @@ def pair_model(spec: PotentialSpec, crystal: Crystal) -> PairModel:
     InputError
         A static distance that no amplitude can give.
     """
-    kinds = _kinds(spec, crystal)
-    springs = _springs(spec, kinds)
-    known: list[Interaction] = []
-    open_pairs: list[PairSpec] = []
-    for pair in spec.pairs:
-        if pair.static_distance is None:
-            known.extend(_interactions(pair, kinds))
-        else:
-            open_pairs.append(pair)
-    model = PairModel(kinds, tuple(known), springs, tuple(_remarks(spec)))
+    open_pairs = [pair for pair in spec.pairs if pair.static_distance is not None]
+    closed = tuple(pair for pair in spec.pairs if pair.static_distance is None)
+    model = closed_model(replace(spec, pairs=closed), crystal.symbols)
     if len(open_pairs) > 1:
         raise InputError(
             f"static_distance stands in {len(open_pairs)} pairs",
@@ -51,12 +44,33 @@ def pair_model(spec: PotentialSpec, crystal: Crystal) -> PairModel:
     for pair in open_pairs:
         amplitude = static_amplitude(model, pair, crystal)
         solved = replace(pair, parameters={**pair.parameters, AMPLITUDE[pair.form]: amplitude})
-        model = replace(model, interactions=(*model.interactions, *_interactions(solved, kinds)))
-    return model
+        model = replace(model, interactions=(*model.interactions, *_interactions(solved, model.kinds)))
+    return replace(model, description=tuple(_remarks(spec)))
 
 
-def _kinds(spec: PotentialSpec, crystal: Crystal) -> tuple[Kind, ...]:
-    present = list(dict.fromkeys(crystal.symbols))
+def closed_model(spec: PotentialSpec, symbols: Sequence[str]) -> PairModel:
+    """Build the pair model of a potential with every amplitude given, for the species present.
+
+    Raises
+    ------
+    InputError
+        An amplitude is given by ``static_distance``, which needs a crystal at rest.
+    """
+    kinds = _kinds(spec, symbols)
+    known: list[Interaction] = []
+    for pair in spec.pairs:
+        if pair.static_distance is not None:
+            raise InputError(
+                f"{'-'.join(pair.between)} has a static_distance in place of its {AMPLITUDE[pair.form]}",
+                where="potential.pair",
+                fix="build the pair model on the crystal at rest first (thermex.potential.build.pair_model)",
+            )
+        known.extend(_interactions(pair, kinds))
+    return PairModel(kinds, tuple(known), _springs(spec, kinds), tuple(_remarks(spec)))
+
+
+def _kinds(spec: PotentialSpec, symbols: Sequence[str]) -> tuple[Kind, ...]:
+    present = list(dict.fromkeys(symbols))
     kinds = []
     for symbol in present:
         shell = spec.polarisable[symbol].shell_charge if symbol in spec.polarisable else 0.0
