@@ -11,7 +11,7 @@ from ase.build import bulk
 from ase.units import GPa
 
 from thermex.ase_calculator import PairCalculator
-from thermex.case.case import Conditions, CrystalSpec
+from thermex.case.case import CrystalSpec
 from thermex.case.published import case_from_published
 from thermex.case.reader import case_from_dict
 from thermex.errors import InputError
@@ -119,9 +119,7 @@ def test_effective_medium_copper_beside_measured_values() -> None:
 
 
 def test_a_crystal_is_returned_as_atoms_at_any_temperature() -> None:
-    prediction = predict(
-        replace(case_from_published("TF64 NaCl", (100.0, 300.0)), conditions=Conditions((100.0, 300.0)))
-    )
+    prediction = predict(case_from_published("TF64 NaCl", (100.0, 300.0)))
     atoms = prediction.structure(300.0)
     assert isinstance(atoms, Atoms) and atoms.get_volume() == pytest.approx(prediction.volume_A3[1])
     assert sorted(atoms.get_chemical_symbols()) == ["Cl", "Na"]

@@ -368,18 +368,27 @@ def _with_own_axes(integers: Ints, box: Array, change: Array, number: int) -> tu
 
 
 def treated_as_tetragonal(crystal: Crystal) -> Crystal:
-    """Return a cubic crystal with c free of a: only the operations that keep the z axis remain.
+    """Return a cubic crystal with c free of a, for comparing the general road with the cubic one."""
+    return _with_axes(crystal, ((0, 1), (2,)), ("a", "c"))
 
-    For comparing the general road with the cubic one.
-    """
+
+def treated_as_orthorhombic(crystal: Crystal) -> Crystal:
+    """Return a cubic crystal with a, b and c free of one another."""
+    return _with_axes(crystal, ((0,), (1,), (2,)), ("a", "b", "c"))
+
+
+def _with_axes(crystal: Crystal, axes: tuple[tuple[int, ...], ...], names: tuple[str, ...]) -> Crystal:
+    """Free some axes of a crystal; only the operations that keep each group of axes to itself remain."""
     lattice = crystal.lattice.T
     cartesian = lattice @ crystal.rotations @ np.linalg.inv(lattice)
-    keep = np.abs(np.abs(cartesian[:, 2, 2]) - 1.0) < 1e-6
+    group = np.repeat(np.arange(len(axes)), [len(axis) for axis in axes])
+    apart = group[:, None] != group[None, :]
+    keep = (np.abs(cartesian[:, apart]) < 1e-6).all(axis=1)
     rotations, translations = crystal.rotations[keep], crystal.translations[keep]
     return replace(
         crystal,
-        axes=((0, 1), (2,)),
-        axis_names=("a", "c"),
+        axes=axes,
+        axis_names=names,
         rotations=rotations,
         translations=translations,
         displacements=invariant_displacements(crystal.lattice, crystal.fractional, rotations, translations),
