@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from thermex import phonons
 from thermex.chebyshev import Box
-from thermex.equilibrium import Load, temperature_at
+from thermex.equilibrium import Load, refine, temperature_at
 from thermex.errors import UnstableCrystalError
 from thermex.free_energy import FreeEnergy, Vibrations
 from thermex.lattice import Lattice
@@ -110,6 +110,9 @@ def survey(lattice: Lattice, load: Load, highest_K: float) -> Branch:
         surface = FreeEnergy((lattice.static_over(box), _vibrations(sampler, box, found)))
         fine = np.linspace(low, high, 17)
         temperatures = temperature_at(surface, fine, load, ceiling)
+        if not xs and np.isfinite(temperatures).any():
+            xs.append(coldest(surface, load, float(fine[np.isfinite(temperatures)][0])))
+            ts.append(0.0)
         for x, t in zip(fine, temperatures, strict=True):
             if np.isnan(t) or (xs and x <= xs[-1]):
                 continue
@@ -132,6 +135,12 @@ def survey(lattice: Lattice, load: Load, highest_K: float) -> Branch:
         low = high
     reason = f"the branch was followed to {np.exp(FARTHEST) - 1:.0%} linear expansion"
     return Branch(np.array(xs), np.array(ts), False, xs[-1], ts[-1], reason, limit)
+
+
+def coldest(surface: FreeEnergy, load: Load, start: float) -> float:
+    """Return x of the minimum at T = 0, near a warmer state."""
+    x, _ = refine(surface.at(np.zeros(1)), np.array([[start]]), load)
+    return min(float(x[0, 0]), start)
 
 
 def _ended(xs: list[float], ts: list[float], limit: float, reason: str) -> Branch:

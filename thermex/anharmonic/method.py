@@ -95,6 +95,9 @@ def method_error(
         raise InputError(reason, where="accuracy.anharmonic", fix='"none" gives the quasi-harmonic answer')
     if reason or model is None:
         return Method(rule, None, (f"No anharmonic correction: {reason}.",))
+    starts = COLDEST * base.debye_K
+    if float(asked.max()) < starts:
+        return Method(rule, None, (f"No anharmonic correction: it starts at {starts:.0f} K, a quarter of θ_D.",))
     if accuracy.anharmonic == "sampled":
         return _checked(rule, sampled(base, model, accuracy, travelled, progress, executor), asked)
     try:
