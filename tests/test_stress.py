@@ -189,8 +189,9 @@ def test_random_physical_parameters_give_numbers_or_a_reason(capsys: pytest.Capt
 @pytest.mark.parametrize("masses", [(0.01, 0.01), (300.0, 300.0), (1.0, 300.0)])
 @pytest.mark.parametrize("pressure", [-5.0, 0.0, 100.0])
 def test_extremes_are_finite_or_refused(masses: tuple[float, float], pressure: float) -> None:
+    both = {"Mg": masses[0], "O": masses[1]}
     case: dict[str, Any] = {
-        "crystal": {"prototype": "rock salt", "sites": ["Mg", "O"], "a": 4.2, "masses": dict(zip(("Mg", "O"), masses))},
+        "crystal": {"prototype": "rock salt", "sites": ["Mg", "O"], "a": 4.2, "masses": both},
         "potential": {
             "charges": {"Mg": 2.0, "O": -2.0},
             "pair": [{"between": ["Mg", "O"], "form": "Born", "n": 8.0, "static_distance": 2.1}],
