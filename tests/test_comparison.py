@@ -14,9 +14,10 @@ from thermex.case.case import Case
 from thermex.case.published import case_from_published
 from thermex.case.reader import case_from_dict
 from thermex.cli import main
-from thermex.comparison.assessment import Assessment, assess, rank
+from thermex.comparison.assessment import Assessment, assess
 from thermex.comparison.budget import closure, facts, parts_at
 from thermex.comparison.deviation import decide
+from thermex.comparison.ranking import rank
 from thermex.comparison.sensitivity import band, sensitivities
 from thermex.measured import load_material
 

@@ -12,7 +12,8 @@ if TYPE_CHECKING:
     from thermex.case.case import Case
     from thermex.case.published import case_from_published, published, published_for, published_names
     from thermex.case.reader import case_from_dict, load_case
-    from thermex.comparison.assessment import Assessment, assess, rank
+    from thermex.comparison.assessment import Assessment, assess
+    from thermex.comparison.ranking import rank
     from thermex.errors import InputError, NoAnswerError, ThermexError
     from thermex.expansion import predict
     from thermex.exploration.calibrate import Calibration, Datum, calibrate
@@ -27,7 +28,7 @@ _HOMES = {
     "Calibration": "thermex.exploration.calibrate",
     "Match": "thermex.exploration.match",
     "Sweep": "thermex.exploration.sweep",
-    "rank": "thermex.comparison.assessment",
+    "rank": "thermex.comparison.ranking",
     "assess": "thermex.comparison.assessment",
     "Assessment": "thermex.comparison.assessment",
     "Datum": "thermex.exploration.calibrate",

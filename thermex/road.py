@@ -35,6 +35,9 @@ COLD_MESHES = ((24, 1), (24, 2))
 #: Supercells tried one after the other, each 1.4 times as long.
 ATTEMPTS = 3
 
+#: Temperatures tried between the last one with a minimum and the first one without.
+PROBES = 8
+
 #: Errors are judged only below this fraction of the branch end, where α runs away by nature.
 JUDGED = 0.95
 
@@ -84,17 +87,11 @@ def travel(
     branch = survey(lattice, load, float(temperature.max()))
     progress("end of the branch", 1, 4)
     branch = _with_fine_end(branch, lattice, load)
-    valid = temperature <= (branch.end_K if branch.ends else np.inf)
-    if not valid.any():
-        raise BranchEndError(
-            f"every temperature asked for lies past the end of the branch at {branch.end_K:.0f} K",
-            where="conditions.temperature",
-            fix=f"ask below {branch.end_K:.0f} K ({branch.reason})",
-        )
-    wanted = temperature[valid]
+    wanted = _on_branch(temperature, branch)
     for attempt in range(ATTEMPTS):
         progress("phonons", 2, 4)
-        solution = _solve(lattice, branch, load, wanted, accuracy)
+        branch, solution = _settled(lattice, branch, load, wanted, accuracy)
+        wanted = solution.states.temperature
         progress("supercell", 3, 4)
         excess = convergence.supercell_error(lattice, solution, load, 6, 3)
         solution = replace(solution, error=replace(solution.error, supercell=excess))
@@ -111,13 +108,69 @@ def travel(
         lattice,
         load,
         solution,
-        valid,
+        temperature <= float(wanted[-1]),
         branch.end_K,
         np.array([branch.end_x]),
         branch.ends,
         branch.reason,
         supercells,
     )
+
+
+def _on_branch(temperature: Array, branch: Branch) -> Array:
+    """Return the temperatures that lie on the branch.
+
+    Raises
+    ------
+    BranchEndError
+        None does.
+    """
+    valid = temperature <= (branch.end_K if branch.ends else np.inf)
+    if not valid.any():
+        raise BranchEndError(
+            f"every temperature asked for lies past the end of the branch at {branch.end_K:.0f} K",
+            where="conditions.temperature",
+            fix=f"ask below {branch.end_K:.0f} K ({branch.reason})",
+        )
+    return temperature[valid]
+
+
+def _settled(lattice: Lattice, branch: Branch, load: Load, wanted: Array, accuracy: float) -> tuple[Branch, Solution]:
+    """Solve, and end the branch earlier where the finer surface has no minimum at the highest temperatures.
+
+    The end is found on a coarser mesh, which can be wrong by some kelvins where modes go soft.
+    """
+    while True:
+        solution = _solve(lattice, branch, load, wanted, accuracy)
+        good = minima(solution)
+        if good.all():
+            return branch, solution
+        last = int(np.argmin(good))
+        if not last:
+            raise BranchEndError("no minimum of the free energy even at the lowest temperature", where="free energy")
+        between = np.linspace(wanted[last - 1], wanted[last], PROBES + 2)[1:-1]
+        trial = np.concatenate([wanted[:last], between])
+        probed = _solve(lattice, _shortened(branch, float(trial[-1])), load, trial, accuracy)
+        sound = minima(probed)
+        end = trial[-1] if sound.all() else trial[max(int(np.argmin(sound)) - 1, 0)]
+        branch, wanted = _shortened(branch, float(end)), wanted[wanted <= end]
+
+
+def _shortened(branch: Branch, kelvin: float) -> Branch:
+    """End a branch at a lower temperature."""
+    x = float(branch.strain_at(np.array([kelvin]))[0])
+    keep = (branch.temperature < kelvin) & (branch.x < x)
+    xs, ts = np.append(branch.x[keep], x), np.append(branch.temperature[keep], kelvin)
+    return replace(branch, x=xs, temperature=ts, ends=True, end_x=x, end_K=kelvin)
+
+
+def minima(solution: Solution) -> NDArray[np.bool_]:
+    """Return which states are minima of F + PV (B_T > 0) inside the window, shape (nT,)."""
+    states = solution.states
+    low, high = solution.surface.box.window[0]
+    margin = 0.1 * (high - low)
+    inside = (states.x[:, 0] > low - margin) & (states.x[:, 0] < high + margin)
+    return np.asarray(inside & (states.bulk_modulus > 0.0) & (states.heat_pressure >= 0.0))
 
 
 def _judged(temperature: Array, branch: Branch) -> NDArray[np.bool_]:

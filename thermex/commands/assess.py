@@ -7,7 +7,7 @@ import sys
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from thermex.commands.predict import with_anharmonic
+from thermex.commands.predict import line_width, with_anharmonic
 from thermex.commands.progress import progress_on
 from thermex.commands.sweep import chosen_executor
 from thermex.errors import InputError
@@ -64,7 +64,11 @@ def chosen_cases(arguments: argparse.Namespace) -> list[Case]:
         material = load_material(arguments.material)
         known = published_for(material.formula)
         if not known:
-            raise InputError(f"no published potential is shipped for {material.formula}", where="--material")
+            raise InputError(
+                f"no published potential is shipped for {material.formula}",
+                where="--material",
+                fix="give case files of your own",
+            )
         count = 13
         grid = tuple(arguments.to * k / (count - 1) for k in range(count))
         cases = [case_from_published(s.name, grid, accuracy=2e-3) for s in known]
@@ -77,7 +81,8 @@ def chosen_cases(arguments: argparse.Namespace) -> list[Case]:
 
 def _one(case: Case, arguments: argparse.Namespace) -> int:
     from thermex.comparison.assessment import assess
-    from thermex.report.assessment_files import assessment_files, assessment_text
+    from thermex.report.assessment_files import assessment_files
+    from thermex.report.assessment_text import assessment_text
     from thermex.report.files import write_folder
 
     with progress_on(sys.stderr) as progress:
@@ -87,7 +92,7 @@ def _one(case: Case, arguments: argparse.Namespace) -> int:
             with_sensitivities=not arguments.quick,
             progress=progress,
         )
-    text = assessment_text(result)
+    text = assessment_text(result, width=line_width())
     if arguments.out is not None:
         write_folder(arguments.out, assessment_files(result, arguments.command_line))
         text += f"\nWritten to {arguments.out}: data, figures, report.html, record.\n"
@@ -96,16 +101,16 @@ def _one(case: Case, arguments: argparse.Namespace) -> int:
 
 
 def _several(cases: list[Case], arguments: argparse.Namespace) -> int:
-    from thermex.comparison.assessment import rank
-    from thermex.report.assessment_files import ranking_files, ranking_text
+    from thermex.comparison.ranking import rank
     from thermex.report.files import write_folder
+    from thermex.report.ranking_files import ranking_files, ranking_text
 
     with chosen_executor(arguments.workers, arguments.scheduler) as executor, progress_on(sys.stderr) as progress:
         ranked = rank(cases, tolerance=arguments.tolerance / 100.0, executor=executor, progress=progress)
-    text = ranking_text(ranked)
+    text = ranking_text(ranked, width=line_width())
     if arguments.out is not None:
         write_folder(arguments.out, ranking_files(ranked, arguments.command_line))
-        text += f"\nWritten to {arguments.out}: ranking.json, ranking.png.\n"
+        text += f"\nWritten to {arguments.out}: data, figure, report.html, record.\n"
     sys.stdout.write(text)
     best = ranked[0].assessment
     return 1 if arguments.strict and (best is None or not best.passed) else 0

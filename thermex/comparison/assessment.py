@@ -3,21 +3,19 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from concurrent.futures import Executor
 from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from thermex.case.case import Case
-from thermex.comparison.budget import Budget, budget, largest_part
-from thermex.comparison.deviation import EXPANSION, FAILS, REPRODUCES, UNDECIDED, Deviation, deviation
+from thermex.comparison.budget import Budget, budget
+from thermex.comparison.deviation import EXPANSION, FAILS, REPRODUCES, UNDECIDED, Deviation, deviation, share
 from thermex.comparison.modelled import Modelled, modelled
 from thermex.comparison.sensitivity import Sensitivity, band, sensitivities
 from thermex.comparison.trust import static_fit_note, trust
-from thermex.errors import InputError, NoAnswerError
+from thermex.errors import InputError
 from thermex.expansion import predict
-from thermex.exploration.executor import InProcess
 from thermex.measured import Material, Series, best_measured, load_material, load_series_file
 
 Array = NDArray[np.float64]
@@ -43,24 +41,15 @@ class Assessment:
     trust: str
     static_fit: str | None
     verdict: str
+    why: str
+    """What the verdict rests on."""
+    not_compared: tuple[str, ...]
+    """Measured quantities that the prediction has nothing to set against."""
 
     @property
     def passed(self) -> bool:
-        """Whether nothing decided fails the tolerance."""
+        """Whether the verdict is not that the potential fails; an undecided one passes."""
         return self.verdict != FAILS
-
-
-@dataclass(frozen=True, slots=True)
-class Ranked:
-    """One case among several."""
-
-    title: str
-    source: str
-    rms: float
-    """Rms relative deviation of α over the measurements common to all; NaN without an answer."""
-    reason: str
-    end_K: float
-    assessment: Assessment | None
 
 
 def _silent(stage: str, done: int, total: int) -> None:
@@ -118,7 +107,9 @@ def assess(
         raise InputError(f"the tolerance is {tolerance:g}", where="tolerance", fix="give a fraction such as 0.1")
     material, series = measured_of(case)
     m = modelled(predict(at_measured_temperatures(case, series), progress=progress))
-    deviations = tuple(d for d in (deviation(m, s, tolerance) for s in series) if d is not None)
+    pairs = [(s, deviation(m, s, tolerance)) for s in series]
+    deviations = tuple(d for _, d in pairs if d is not None)
+    verdict, why = overall(deviations, tolerance)
     split = budget(m, material, _budget_temperatures(series)) if material is not None else None
     asked = np.array(case.conditions.temperatures)
     chosen = np.array([t for t in (100.0, 300.0, 1000.0) if asked.min() <= t <= min(asked.max(), _last(m))])
@@ -136,7 +127,9 @@ def assess(
         band=band(case, found),
         trust=trust(m, tuple(d for d in deviations if d.series.quantity in EXPANSION)),
         static_fit=static_fit_note(m, room.value if room else None),
-        verdict=overall(deviations),
+        verdict=verdict,
+        why=why,
+        not_compared=tuple(dict.fromkeys(s.quantity for s, d in pairs if d is None)),
     )
 
 
@@ -154,63 +147,15 @@ def _budget_temperatures(series: Sequence[Series]) -> Array:
     return np.array([t for t in spaced if found[0] - 1.0 <= t <= found[-1] + 1.0] or [found[0]])
 
 
-def overall(deviations: Sequence[Deviation]) -> str:
-    """Return the verdict over all expansion series that are decided; the majority of points decides."""
-    votes = {REPRODUCES: 0, FAILS: 0}
-    for d in deviations:
-        if d.series.quantity in EXPANSION and d.verdict in votes:
-            votes[d.verdict] += len(d.temperature_K)
-    if not sum(votes.values()):
-        return UNDECIDED
-    return REPRODUCES if votes[REPRODUCES] >= votes[FAILS] else FAILS
-
-
-def _assess_quietly(arguments: tuple[Case, float]) -> Assessment | str:
-    """Assess one of several cases; the reason where there is no answer."""
-    try:
-        return assess(arguments[0], tolerance=arguments[1], with_sensitivities=False)
-    except (NoAnswerError, InputError) as error:
-        return str(error)
-
-
-def rank(
-    cases: Sequence[Case], *, tolerance: float = 0.1, executor: Executor | None = None, progress: Progress = _silent
-) -> tuple[Ranked, ...]:
-    """Rank several cases by their rms deviation from the same measurements over the same temperatures."""
-    pool = executor or InProcess()
-    futures = [pool.submit(_assess_quietly, (case, tolerance)) for case in cases]
-    results: list[Assessment | str] = []
-    for k, future in enumerate(futures):
-        results.append(future.result())
-        progress("cases", k + 1, len(cases))
-    common = _common(results)
-    out = []
-    for case, result in zip(cases, results, strict=True):
-        cite = case.potential.citation or case.source
-        if isinstance(result, str):
-            out.append(Ranked(case.title, cite, float("nan"), result, float("nan"), None))
-            continue
-        reason = largest_part(result.budget) if result.budget else "no budget: factors not measured"
-        end = result.modelled.prediction.valid_to_K
-        out.append(Ranked(case.title, cite, _rms_over(result, common), reason, end, result))
-    return tuple(sorted(out, key=lambda r: (not np.isfinite(r.rms), r.rms)))
-
-
-def _points(a: Assessment) -> dict[tuple[int, float], float]:
-    """Return (series, T) → relative deviation of every usable expansion measurement."""
-    out: dict[tuple[int, float], float] = {}
-    for k, d in enumerate(a.deviations):
-        if d.series.quantity in EXPANSION and d.series.usable:
-            out.update({(k, float(t)): float(r) for t, r in zip(d.temperature_K, d.relative, strict=True)})
-    return out
-
-
-def _common(results: Sequence[Assessment | str]) -> set[tuple[int, float]]:
-    """Return the measurements that every answered case covers."""
-    found = [set(_points(r)) for r in results if isinstance(r, Assessment)]
-    return set.intersection(*found) if found else set()
-
-
-def _rms_over(a: Assessment, common: set[tuple[int, float]]) -> float:
-    values = [v for k, v in _points(a).items() if k in common]
-    return float(np.sqrt(np.mean(np.square(values)))) if values else float("nan")
+def overall(deviations: Sequence[Deviation], tolerance: float) -> tuple[str, str]:
+    """Return the verdict over every point of the expansion series that are decided, by their rms, and why."""
+    decided = [d for d in deviations if d.series.quantity in EXPANSION and d.verdict in (REPRODUCES, FAILS)]
+    if not decided:
+        return UNDECIDED, "no series of expansion carries a verdict"
+    rms = float(np.sqrt(np.mean(np.concatenate([d.relative for d in decided]) ** 2)))
+    points = sum(len(d.relative) for d in decided)
+    failed = sum(d.verdict == FAILS for d in decided)
+    said = f"rms {share(rms)} over {points} points of {len(decided)} decided series"
+    if failed:
+        said += f", {failed} of which fail" if failed > 1 else ", one of which fails"
+    return (REPRODUCES if rms <= tolerance else FAILS), said

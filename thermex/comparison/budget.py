@@ -180,7 +180,8 @@ def largest_part(b: Budget) -> str:
     if not parts:
         return "not known: the factors were not measured"
     name = max(parts, key=lambda k: abs(parts[k]))
-    return f"{name} {'raises' if parts[name] > 0 else 'lowers'} α by {abs(np.expm1(parts[name])):.0%}"
+    change = f"{'raises' if parts[name] > 0 else 'lowers'} α by {abs(np.expm1(parts[name])):.0%}"
+    return f"{name} {change} at {b.temperature_K[index]:.0f} K"
 
 
 def _best_row(b: Budget) -> int:
@@ -208,7 +209,8 @@ def _words(kelvin: Array, table: Array, missing: tuple[str, ...], kind: str) -> 
     if len({np.sign(v) for v in good.values()}) == 2:
         sentences.append("Errors of opposite sign cancel in part.")
     if abs(row[5]) > 0.01:
-        sentences.append(f"The quasi-harmonic approximation alone would have given α {np.expm1(row[5]):+.0%}.")
+        higher = "higher" if row[5] > 0.0 else "lower"
+        sentences.append(f"The quasi-harmonic α would be {abs(np.expm1(row[5])):.0%} {higher} than this corrected one.")
     if missing:
         sentences.append(f"Not measured here, so not split: {', '.join(missing)}.")
     return " ".join(sentences)

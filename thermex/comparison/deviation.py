@@ -9,11 +9,15 @@ from numpy.typing import NDArray
 
 from thermex.comparison.modelled import Modelled
 from thermex.measured import Series
+from thermex.measured.series import FROM_MEMORY
 
 Array = NDArray[np.float64]
 
 #: Measured quantities that a verdict on expansion can rest on.
 EXPANSION = ("linear expansion coefficient", "volume expansion coefficient", "elongation")
+
+#: The lattice parameter moves by a few tenths of a percent where α moves by tens: its share of the tolerance.
+TOLERANCE_SHARE = {"lattice parameter": 0.05}
 
 REPRODUCES, FAILS, UNDECIDED = "reproduces", "does not reproduce", "undecided"
 
@@ -41,7 +45,11 @@ class Deviation:
     worst_K: float
     worst_relative: float
     left_out: int
-    """Measured points outside the answer."""
+    """Measured points at which there is no answer to compare with."""
+    alpha_kind: str
+    """Which answer was compared: "quasi-harmonic", "leading order" or "sampled"."""
+    tolerance: float
+    """What the rms deviation of this quantity is judged by."""
     verdict: str
     why: str
 
@@ -54,19 +62,19 @@ def model_of(m: Modelled, series: Series) -> Array | None:
         return m.at(m.lattice[axis or "a"], kelvin)
     if series.quantity == "volume expansion coefficient":
         return 3.0 * m.at(m.alpha, kelvin)
-    length = m.lattice[axis] if axis else np.cbrt(m.volume)
     if series.quantity == "linear expansion coefficient" and series.kind == "instantaneous":
         return m.at(m.alpha_axis[axis] if axis else m.alpha, kelvin)
     if series.quantity == "elongation" or series.kind == "mean":
-        t0 = series.reference_temperature_K
-        start = m.at(length, np.array([293.15 if t0 is None else float(t0)]))[0]
-        stretch = m.at(length, kelvin) / start - 1.0
+        t0 = 293.15 if series.reference_temperature_K is None else float(series.reference_temperature_K)
+        length = m.log_length[axis]
+        stretch = np.expm1(m.at(length, kelvin) - m.at(length, np.array([t0]))[0])
         if series.quantity == "elongation":
             return np.asarray(stretch)
         with np.errstate(divide="ignore", invalid="ignore"):
-            return np.asarray(stretch / (kelvin - (293.15 if t0 is None else float(t0))))
+            return np.asarray(stretch / (kelvin - t0))
     plain = {
         "isothermal bulk modulus": m.bulk_modulus,
+        "adiabatic bulk modulus": m.bulk_modulus_adiabatic,
         "heat capacity at constant pressure": m.heat_pressure,
         "Grüneisen parameter": m.gruneisen,
     }.get(series.quantity)
@@ -87,7 +95,8 @@ def deviation(m: Modelled, series: Series, tolerance: float) -> Deviation | None
     units = np.abs(model - measured) / combined
     mean, rms = (float(relative.mean()), float(np.sqrt(np.mean(relative**2)))) if len(kelvin) else (np.nan, np.nan)
     worst = int(np.argmax(np.abs(relative))) if len(kelvin) else -1
-    verdict, why = decide(series, relative, sigma / np.abs(measured), tolerance)
+    own = tolerance * TOLERANCE_SHARE.get(series.quantity, 1.0)
+    verdict, why = decide(series, relative, sigma / np.abs(measured), own)
     return Deviation(
         series=series,
         source=series.citation,
@@ -103,6 +112,8 @@ def deviation(m: Modelled, series: Series, tolerance: float) -> Deviation | None
         worst_K=float(kelvin[worst]) if worst >= 0 else float("nan"),
         worst_relative=float(relative[worst]) if worst >= 0 else float("nan"),
         left_out=int(len(series.temperature_K) - len(kelvin)),
+        alpha_kind=m.kind_over(kelvin),
+        tolerance=own,
         verdict=verdict,
         why=why,
     )
@@ -111,19 +122,37 @@ def deviation(m: Modelled, series: Series, tolerance: float) -> Deviation | None
 def decide(series: Series, relative: Array, spread: Array, tolerance: float) -> tuple[str, str]:
     """Return the verdict on one series and its reason.
 
-    Undecided when nothing overlaps, the series is contradicted elsewhere, it was recalled from memory
-    alone, or its own uncertainty exceeds the tolerance; else the rms deviation decides.
+    Undecided when nothing overlaps, the series is contradicted elsewhere or was held fixed in a fit, it was
+    recalled from memory and confirmed by nobody, or its own uncertainty exceeds the tolerance; else the
+    rms deviation decides.
     """
     if not len(relative):
         return UNDECIDED, "no temperature where both the measurement and the prediction hold"
     if not series.usable:
-        return UNDECIDED, f"the series is contradicted elsewhere: {series.remark}"
-    if series.from_memory:
-        return UNDECIDED, "the values are from memory alone"
+        return UNDECIDED, f"the series is kept out of verdicts: {series.remark}"
+    if held_fixed(series):
+        return UNDECIDED, "the value was held fixed in the fit it comes from"
+    if series.how == FROM_MEMORY:
+        return UNDECIDED, "the values are from memory, confirmed by no source"
     typical = float(np.nanmedian(spread)) if np.isfinite(spread).any() else float("nan")
     if typical > tolerance:
-        return UNDECIDED, f"the measurement's own uncertainty ({typical:.0%}) exceeds the tolerance"
+        return UNDECIDED, f"the measurement's own uncertainty ({typical:.1%}) exceeds the tolerance ({tolerance:.1%})"
     rms = float(np.sqrt(np.mean(relative**2)))
     if rms <= tolerance:
-        return REPRODUCES, f"rms deviation {rms:.1%} within {tolerance:.0%}"
-    return FAILS, f"rms deviation {rms:.1%} beyond {tolerance:.0%}"
+        return REPRODUCES, f"rms deviation {share(rms)} within {share(tolerance)}"
+    return FAILS, f"rms deviation {share(rms)} beyond {share(tolerance)}"
+
+
+def held_fixed(series: Series) -> bool:
+    """Whether the source of a series did not measure its quantity but held it fixed."""
+    said = f"{series.source} {series.remark}".lower()
+    if "held fixed" not in said and "fixed there" not in said:
+        return False
+    if series.quantity == "Grüneisen parameter":
+        return "gamma" in said or "held fixed in that" in said
+    return "bulk modulus" in series.quantity and ("k_0t" in said or "k_t0" in said)
+
+
+def share(value: float) -> str:
+    """Return a fraction as per cent: one decimal, two below half a percent."""
+    return f"{100.0 * value:.2f} %" if abs(value) < 0.005 else f"{100.0 * value:.1f} %"

@@ -22,13 +22,7 @@ def lindemann_ratio(prediction: Prediction) -> np.ndarray:
 def trust(m: Modelled, deviations: tuple[Deviation, ...]) -> str:
     """Return one paragraph that separates the three errors of α."""
     p = m.prediction
-    good = np.isfinite(p.alpha_relative_error) & (p.temperature_K >= 100.0)
-    numerical = float(np.nanmax(p.alpha_relative_error[good])) if good.any() else float("nan")
-    parts = [
-        f"Numerical: the α of this potential is converged to {numerical:.2g} (relative) or better at 100 K and above."
-        if np.isfinite(numerical)
-        else "Numerical: no temperature of 100 K or more was predicted."
-    ]
+    parts = [_numerical(m)]
     if p.branch_ends:
         parts.append(f"Method: the quasi-harmonic branch ends at {p.valid_to_K:.0f} K.")
     if p.rule is not None and np.isfinite(p.rule.overestimate).any():
@@ -50,11 +44,28 @@ def trust(m: Modelled, deviations: tuple[Deviation, ...]) -> str:
         )
     decided = [d for d in deviations if d.verdict != "undecided" and np.isfinite(d.rms_relative_deviation)]
     if decided:
-        rms = float(np.median([d.rms_relative_deviation for d in decided]))
-        parts.append(f"Potential: what is left against the measurements, {rms:.0%} rms (median of the series decided).")
+        rms = sorted(d.rms_relative_deviation for d in decided)
+        span = f"{rms[0]:.0%}" if len(rms) == 1 else f"{rms[0]:.0%} to {rms[-1]:.0%}"
+        parts.append(
+            f"Potential: what is left against the measurements, {span} rms over the {len(rms)} decided series; what "
+            "the method still misses and the error of the measurements are inside."
+        )
     else:
         parts.append("Potential: no measured series decides here.")
     return " ".join(parts)
+
+
+def _numerical(m: Modelled) -> str:
+    """Say how large the numerical error of the α that is compared is, from 100 K on."""
+    good = np.isfinite(m.relative_error) & (m.temperature >= 100.0)
+    if not good.any():
+        return "Numerical: no temperature of 100 K or more was predicted."
+    worst = int(np.argmax(np.where(good, m.relative_error, -1.0)))
+    inside = " (that of the correction included)" if m.temperature[worst] >= m.starts_K else ""
+    return (
+        f"Numerical: the error of the α compared is at most {m.relative_error[worst]:.1%}{inside}, "
+        f"at {m.temperature[worst]:.0f} K, from 100 K on."
+    )
 
 
 def static_fit_note(m: Modelled, room_lattice_A: float | None) -> str | None:

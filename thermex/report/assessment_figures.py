@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
 import numpy as np
 
-from thermex.comparison.assessment import Assessment, Ranked
+from thermex.comparison.assessment import Assessment
 from thermex.comparison.budget import parts_at
 from thermex.comparison.deviation import EXPANSION
+from thermex.comparison.ranking import Ranking
 from thermex.report.style import BLACK, BLUE, GREY, LINES, MARKS, VERMILION, dress, legend, new_axes
 
 if TYPE_CHECKING:
@@ -39,9 +39,12 @@ def plot_assessment(a: Assessment, *, ax: Axes | None = None) -> Axes:
         )
     values = np.concatenate([100 * d.relative for d in shown]) if shown else np.zeros(1)
     inner = np.percentile(np.abs(values), 95) if len(values) else 10.0
-    limit = max(1.2 * inner, 150 * a.tolerance)
-    axes.set_ylim(-limit, limit)
-    dress(axes, x="Temperature (K)", y="Predicted against measured (%)")
+    limit = 100 * a.tolerance
+    low, high = min(float(values.min()), -limit), max(float(values.max()), limit)
+    low, high = max(low, -4.0 * max(inner, limit)), min(high, 4.0 * max(inner, limit))
+    margin = 0.08 * (high - low)
+    axes.set_ylim(low - margin, high + margin)
+    dress(axes, x="Temperature / K", y="Predicted against measured / %")
     legend(axes)
     return axes
 
@@ -52,21 +55,27 @@ def plot_budget(a: Assessment, *, ax: Axes | None = None) -> Axes:
     b = a.budget
     if b is None:
         return axes
-    rows = [k for k in range(len(b.temperature_K)) if np.isfinite(b.ln_gruneisen_ratio[k])]
-    rows = rows or list(range(len(b.temperature_K)))
+    rows = list(range(len(b.temperature_K)))
     width = 0.16
     x = np.arange(len(rows))
     labels = {"Grüneisen parameter": "γ", "heat capacity": "C_V", "bulk modulus": "B_T", "volume": "V"}
     for j, (name, short) in enumerate(labels.items()):
         values = np.array([parts_at(b, k)[name] for k in rows])
-        axes.bar(x + (j - 1.5) * width, np.nan_to_num(values), width, color=LINES[j], label=short)
-    axes.plot(x, b.ln_alpha_ratio[rows], "D", color=BLACK, markersize=6, label="sum: α")
-    if np.abs(b.ln_method_ratio[rows]).max() > 1e-6:
-        axes.bar(x + 2.6 * width, b.ln_method_ratio[rows], width, color=GREY, label="method, removed")
+        axes.bar(x + (j - 2) * width, np.nan_to_num(values), width, color=LINES[j], label=short)
+    axes.bar(x + 2 * width, b.ln_method_ratio[rows], width, color=GREY, label="method (not in the sum)")
+    axes.plot(x, b.ln_alpha_ratio[rows], "D", color=BLACK, markersize=6, label="α")
     axes.axhline(0.0, color=BLACK, linewidth=0.8)
     axes.set_xticks(x, [f"{b.temperature_K[k]:.0f}" for k in rows])
-    dress(axes, x="Temperature (K)", y="Contribution to ln(α predicted/α measured)")
-    axes.legend(loc="lower center", bbox_to_anchor=(0.5, 1.0), ncols=6, fontsize=8, frameon=False)
+    dress(axes, x="Temperature / K", y="Contribution to ln(α predicted/α measured)")
+    axes.legend(
+        loc="lower center",
+        bbox_to_anchor=(0.5, 1.0),
+        ncols=6,
+        columnspacing=1.0,
+        handlelength=1.2,
+        fontsize=8,
+        frameon=False,
+    )
     return axes
 
 
@@ -88,17 +97,17 @@ def plot_sensitivities(a: Assessment, *, ax: Axes | None = None) -> Axes:
     return axes
 
 
-def plot_ranking(ranked: Sequence[Ranked], *, ax: Axes | None = None) -> Axes:
+def plot_ranking(ranked: Ranking, *, ax: Axes | None = None) -> Axes:
     """Draw the rms deviation of several cases, best first; those without an answer are marked."""
-    axes = ax if ax is not None else new_axes((6.2, 1.2 + 0.35 * len(ranked)))
+    axes = ax if ax is not None else new_axes((6.2, 1.2 + 0.45 * len(ranked)))
     y = np.arange(len(ranked))
     values = np.array([100 * r.rms for r in ranked])
     good = np.isfinite(values)
     axes.barh(y[good], values[good], 0.6, color=BLUE)
     axes.plot(np.zeros((~good).sum()), y[~good], "x", color=VERMILION, clip_on=False, label="no answer")
-    axes.set_yticks(y, [r.title[:40] for r in ranked])
+    axes.axvline(100 * ranked.tolerance, color=BLACK, linewidth=1.0, linestyle="--", label="tolerance")
+    axes.set_yticks(y, [f"{r.title[:40]}\n{r.kind}" for r in ranked], fontsize=8)
     axes.invert_yaxis()
-    dress(axes, x="Rms deviation of expansion (%)", y="")
-    if (~good).any():
-        legend(axes)
+    dress(axes, x="Rms deviation of expansion / %", y="")
+    legend(axes)
     return axes

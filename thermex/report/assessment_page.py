@@ -6,9 +6,10 @@ from collections.abc import Mapping
 from typing import TYPE_CHECKING
 
 from thermex.comparison.assessment import Assessment
-from thermex.report.caution import CAUTION
-from thermex.report.numbers import percent
-from thermex.report.page import Picture, Section, gallery, page, paragraphs, word_table
+from thermex.comparison.deviation import Deviation
+from thermex.report.assessment_text import kind_line, per_cent, source_lines, undecided_lines, verdict_line
+from thermex.report.numbers import ABSENT, fixed
+from thermex.report.page import Picture, Section, gallery, listing, number_table, page, paragraphs
 from thermex.report.style import svg_bytes
 
 if TYPE_CHECKING:
@@ -33,25 +34,28 @@ _WORDS = {
 
 def assessment_page(a: Assessment, figures: Mapping[str, Axes]) -> str:
     """Return the page as one self-contained HTML document."""
-    lead = [f"Verdict: {a.verdict} measured expansion within {a.tolerance:.0%} (rms)."]
+    lead = [verdict_line(a), kind_line(a)]
     if a.budget is not None:
         lead.append(a.budget.words)
-    rows = [
-        (
-            d.quantity,
-            percent(d.mean_relative_deviation),
-            percent(d.rms_relative_deviation),
-            d.verdict,
-            d.why,
-            d.source,
-        )
-        for d in a.deviations
-    ]
+    heads = [("mean", "%"), ("rms", "%"), ("worst", "%"), ("at", "K"), ("points", ""), ("verdict", ""), ("series", "")]
+    rows = [_cells(d) for d in a.deviations]
     pictures = [Picture(svg_bytes(axes), *_WORDS[name]) for name, axes in figures.items()]
     sections = [
         Section("In pictures", gallery(pictures)),
-        Section("Series by series", word_table(("series", "mean", "rms", "verdict", "why", "source"), rows)),
+        Section("Series by series", number_table(heads, rows) + listing(undecided_lines(a))),
         Section("How far to trust it", paragraphs([a.trust, *([a.static_fit] if a.static_fit else [])])),
-        Section("Caution", paragraphs([CAUTION])),
+        Section("Measured values", listing(list(source_lines(a)))),
     ]
     return page(a.case.title, lead, sections)
+
+
+def _cells(d: Deviation) -> tuple[str, ...]:
+    return (
+        per_cent(d.mean_relative_deviation),
+        per_cent(d.rms_relative_deviation, False),
+        per_cent(d.worst_relative),
+        fixed(d.worst_K, 0) if len(d.temperature_K) else ABSENT,
+        str(len(d.temperature_K)),
+        d.verdict,
+        f"{d.quantity} [{d.series.source_number}]",
+    )
