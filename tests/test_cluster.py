@@ -60,7 +60,7 @@ def test_sweep_on_a_cluster(scheduler: str, tmp_path: Path) -> None:
     )
     assert out.returncode == 0, out.stderr
     assert (tmp_path / "out" / "journal.jsonl").read_text().count("\n") == 4
-    assert out.stdout.count("guides:") == 3
+    assert "Closed forms" in out.stdout and "no answer" not in out.stdout
 
 
 def test_no_scheduler_is_told() -> None:

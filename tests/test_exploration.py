@@ -77,7 +77,7 @@ def test_born_lande_modulus_and_gruneisen_forms() -> None:
 
 def test_unstable_points_are_kept_with_their_reason() -> None:
     result = sweep(born_crystal(), "Na-Cl.n", [4.0, 8.0])
-    assert not result.points[0].answered and "unstable" in result.points[0].reason
+    assert not result.points[0].answered and "unstable" in result.points[0].valid_to_reason
     assert result.points[1].answered
 
 

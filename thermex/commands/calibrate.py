@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 
 from thermex.commands.predict import with_anharmonic
 from thermex.commands.progress import progress_on
+from thermex.commands.sweep import CORRECTION, EXITS
 from thermex.errors import InputError
 
 if TYPE_CHECKING:
@@ -30,15 +31,27 @@ def add_parser(subparsers: Any, common: argparse.ArgumentParser) -> None:
         parents=[common],
         help="fit parameters of the potential to measured values",
         description="Least squares over parameters of the potential against measured values of the case's material "
-        "(or of its own file), zero-point and thermal expansion inside the fit.",
+        "(or of its own file), zero-point and thermal expansion inside the fit. What was measured and is not fitted is "
+        "shown before and after. " + EXITS,
+        epilog="Example: thermex calibrate case.toml --parameters Mg-O.A,Mg-O.rho --data alpha,a,B_T --out fitted",
     )
     parser.add_argument("case", metavar="CASE", type=Path, help="case file (TOML) that names measured values")
     parser.add_argument("--parameters", required=True, metavar="NAME,NAME", help="for example Mg-O.A,Mg-O.rho")
     parser.add_argument("--data", default="alpha,a", metavar="WHAT,WHAT", help=f"of {', '.join(NAMES)} (alpha,a)")
-    parser.add_argument("--from", dest="low", type=float, default=100.0, metavar="T", help="lowest temperature, K")
-    parser.add_argument("--to", dest="high", type=float, default=1000.0, metavar="T", help="highest temperature, K")
-    parser.add_argument("--bounds", action="append", default=[], metavar="NAME=LOW,HIGH", help="range of a parameter")
-    parser.add_argument("--anharmonic", choices=("none", "leading order"), help="correction, in place of the case's")
+    parser.add_argument(
+        "--from", dest="low", type=float, default=100.0, metavar="T", help="lowest temperature, K (100)"
+    )
+    parser.add_argument(
+        "--to", dest="high", type=float, default=1000.0, metavar="T", help="highest temperature, K (1000)"
+    )
+    parser.add_argument(
+        "--bounds",
+        action="append",
+        default=[],
+        metavar="NAME=LOW,HIGH",
+        help="range of a parameter (0.7 to 1.4 times its value)",
+    )
+    parser.add_argument("--anharmonic", choices=("none", "leading order"), help=CORRECTION)
     parser.add_argument("--out", metavar="FOLDER", type=Path, help="write results and the new case here")
     parser.set_defaults(run=run)
 
@@ -53,10 +66,14 @@ def run(arguments: argparse.Namespace) -> int:
     case = with_anharmonic(load_case(arguments.case), arguments.anharmonic)
     if arguments.out is not None:
         check_folder(arguments.out)
-    data = measured_data(case, arguments.data.split(","), arguments.low, arguments.high)
+    kinds = [name.strip() for name in arguments.data.split(",")]
+    data = measured_data(case, kinds, arguments.low, arguments.high)
+    rest = [name for name in NAMES if name not in kinds]
+    held_out = measured_data(case, rest, arguments.low, arguments.high, required=False) if rest else []
     names = [n.strip() for n in arguments.parameters.split(",") if n.strip()]
     with progress_on(sys.stderr) as progress:
-        result = calibrate(case, names, data, bounds=read_bounds(arguments.bounds), progress=progress)
+        bounds = read_bounds(arguments.bounds)
+        result = calibrate(case, names, data, bounds=bounds, held_out=held_out, progress=progress)
     text = calibration_text(result)
     if arguments.out is not None:
         write_folder(arguments.out, calibration_files(result, arguments.command_line))
@@ -65,7 +82,7 @@ def run(arguments: argparse.Namespace) -> int:
     return 0
 
 
-def measured_data(case: Case, what: list[str], low: float, high: float) -> list[Datum]:
+def measured_data(case: Case, what: list[str], low: float, high: float, *, required: bool = True) -> list[Datum]:
     """Return the data that the case's measured values offer.
 
     Raises
@@ -82,13 +99,18 @@ def measured_data(case: Case, what: list[str], low: float, high: float) -> list[
             raise InputError(f'"{name}" is not a kind of data', where="--data", fix=f"of {', '.join(NAMES)}")
         wanted.extend(NAMES[name.strip()])
     if case.measured is None:
-        raise InputError("the case names no measured values", where="measured", fix='add [measured] material = "…"')
+        where = f"{case.source}: measured" if case.source else "measured"
+        raise InputError("the case names no measured values", where=where, fix='add [measured] material = "…"')
     series = load_series_file(case.measured.file) if case.measured.file else ()
     if case.measured.material:
         series = (*series, *load_material(case.measured.material).series)
     data = data_of(series, wanted, low, high)
-    if not data:
-        raise InputError(f"nothing of {', '.join(what)} was measured from {low:g} to {high:g} K", where="--data")
+    if required and not data:
+        raise InputError(
+            f"nothing of {', '.join(what)} was measured from {low:g} to {high:g} K",
+            where="--data",
+            fix="widen --from and --to, or take other data",
+        )
     return data
 
 

@@ -10,7 +10,7 @@ from typing import Any
 
 from thermex.commands.predict import with_anharmonic
 from thermex.commands.progress import progress_on
-from thermex.commands.sweep import measured_alpha
+from thermex.commands.sweep import CORRECTION, EXITS
 from thermex.errors import InputError
 
 NAMES = {"alpha": "alpha_linear_per_K", "a": "lattice_A", "B_T": "bulk_modulus_T_GPa"}
@@ -22,7 +22,9 @@ def add_parser(subparsers: Any, common: argparse.ArgumentParser) -> None:
         "match",
         parents=[common],
         help="find the value of a parameter at which a prediction equals a measured value",
-        description="Find the value of one parameter at which α, a or B_T at a temperature equals a measured value.",
+        description="Find the value of one parameter at which α, a or B_T at a temperature equals a measured value. "
+        + EXITS,
+        epilog="Example: thermex match case.toml --parameter Na-Cl.n --at 300 --from 7 --to 13",
     )
     parser.add_argument("case", metavar="CASE", type=Path, help="case file (TOML)")
     parser.add_argument("--parameter", required=True, metavar="NAME", help="for example Na-Cl.n")
@@ -32,10 +34,14 @@ def add_parser(subparsers: Any, common: argparse.ArgumentParser) -> None:
         "--target", type=float, metavar="V", help="10⁻⁶/K, Å or GPa; by default the measured α of the case's material"
     )
     parser.add_argument("--uncertainty", type=float, default=0.0, metavar="U", help="of the target, same unit")
-    parser.add_argument("--from", dest="low", type=float, metavar="V", help="lower end of the range")
-    parser.add_argument("--to", dest="high", type=float, metavar="V", help="upper end of the range")
+    parser.add_argument(
+        "--from", dest="low", type=float, metavar="V", help="lower end of the range (0.8 times the present value)"
+    )
+    parser.add_argument(
+        "--to", dest="high", type=float, metavar="V", help="upper end of the range (1.25 times the present value)"
+    )
     parser.add_argument("--hold", choices=("parameters", "distance"), default="parameters", help="as in sweep")
-    parser.add_argument("--anharmonic", choices=("none", "leading order"), help="correction, in place of the case's")
+    parser.add_argument("--anharmonic", choices=("none", "leading order"), help=CORRECTION)
     parser.add_argument("--out", metavar="FOLDER", type=Path, help="write results and the new case here")
     parser.set_defaults(run=run)
 
@@ -43,7 +49,8 @@ def add_parser(subparsers: Any, common: argparse.ArgumentParser) -> None:
 def run(arguments: argparse.Namespace) -> int:
     """Match, write the files when asked to, then say what was found."""
     from thermex.case.reader import load_case
-    from thermex.exploration.match import match
+    from thermex.exploration.match import match, rounded_to, shown
+    from thermex.exploration.measured_data import measured_alpha
     from thermex.report.caution import CAUTION
     from thermex.report.exploration_files import match_files
     from thermex.report.files import check_folder, write_folder
@@ -53,11 +60,18 @@ def run(arguments: argparse.Namespace) -> int:
         check_folder(arguments.out)
     target, uncertainty = arguments.target, arguments.uncertainty
     scale = 1e-6 if arguments.quantity == "alpha" else 1.0
+    source = "given"
     if target is None:
         found = measured_alpha(case, arguments.at) if arguments.quantity == "alpha" else None
         if found is None:
-            raise InputError("no target is given, and none is measured here", where="match", fix="give --target")
-        target, uncertainty = found[0] / scale, (found[1] if math.isfinite(found[1]) else 0.0) / scale
+            raise InputError(
+                f"names no measured {arguments.quantity} at {arguments.at:g} K, and no target is given",
+                where=f"{arguments.case}: measured",
+                fix="give --target",
+            )
+        source = found.source
+        target = found.value / scale
+        uncertainty = (found.uncertainty if math.isfinite(found.uncertainty) else 0.0) / scale
     with progress_on(sys.stderr) as progress:
         result = match(
             case,
@@ -69,11 +83,18 @@ def run(arguments: argparse.Namespace) -> int:
             low=arguments.low,
             high=arguments.high,
             hold=arguments.hold,
+            source=source,
             progress=progress,
         )
-    lines = [case.title, result.words]
+    name = NAMES[arguments.quantity]
+    spread = f" ± {shown(name, uncertainty * scale)}" if uncertainty else ""
+    lines = [case.title, f"Target: {shown(name, target * scale)}{spread} ({source}).", result.words]
     if result.low is not None and result.high is not None and result.high > result.low:
-        lines.append(f"The uncertainty of the target allows {result.low:.5g} to {result.high:.5g}.")
+        ends = [rounded_to(value, result.low, result.high) for value in (result.low, result.high)]
+        lines.append(f"The uncertainty of the target allows {ends[0]} to {ends[1]}.")
+    lines.append(f"The answer matched is {result.kind}.")
+    if result.extrapolated:
+        lines.append("It lies beyond the range in which the method was tested (T_eff/T_end above 0.5).")
     if arguments.out is not None:
         write_folder(arguments.out, match_files(result, arguments.command_line))
         lines.append(f"Written to {arguments.out}.")

@@ -8,14 +8,17 @@ from collections.abc import Iterator
 from concurrent.futures import Executor
 from contextlib import contextmanager
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import Any
 
 from thermex.commands.predict import with_anharmonic
 from thermex.commands.progress import progress_on
 from thermex.errors import InputError
 
-if TYPE_CHECKING:
-    from thermex.case.case import Case
+CORRECTION = (
+    "correction of α in place of the case's (by default leading order where it is tested); sampling, which takes "
+    "seconds a point, is for predict and assess"
+)
+EXITS = "Exit status: 0 done, 2 wrong input, 3 no answer, 130 interrupted."
 
 
 def add_parser(subparsers: Any, common: argparse.ArgumentParser) -> None:
@@ -24,7 +27,8 @@ def add_parser(subparsers: Any, common: argparse.ArgumentParser) -> None:
         "sweep",
         parents=[common],
         help="predict at many values of a parameter of the potential",
-        description="Predict a case at many values of one parameter of its potential, or of two.",
+        description="Predict a case at many values of one parameter of its potential, or of two. " + EXITS,
+        epilog="Example: thermex sweep case.toml --parameter Na-Cl.n --values 7,8,9.1,10,12 --out exponents",
     )
     parser.add_argument("case", metavar="CASE", type=Path, help="case file (TOML)")
     parser.add_argument("--parameter", required=True, metavar="NAME", help="for example Na-Cl.n")
@@ -37,10 +41,10 @@ def add_parser(subparsers: Any, common: argparse.ArgumentParser) -> None:
         "--hold",
         choices=("parameters", "distance"),
         default="parameters",
-        help="keep the other parameters, or the static nearest-neighbour distance (amplitude solved again)",
+        help="keep the other parameters, or the static nearest-neighbour distance (amplitude solved again); parameters",
     )
     parser.add_argument("--at", type=float, default=300.0, metavar="T", help="temperature of the table, K (300)")
-    parser.add_argument("--anharmonic", choices=("none", "leading order"), help="correction, in place of the case's")
+    parser.add_argument("--anharmonic", choices=("none", "leading order"), help=CORRECTION)
     parser.add_argument("--workers", type=int, metavar="N", help="local worker processes")
     parser.add_argument("--scheduler", metavar="ADDRESS", help="a running Dask scheduler")
     parser.add_argument("--out", metavar="FOLDER", type=Path, help="write results here; the same command resumes")
@@ -50,6 +54,7 @@ def add_parser(subparsers: Any, common: argparse.ArgumentParser) -> None:
 def run(arguments: argparse.Namespace) -> int:
     """Sweep, write the files when asked to, then show the table."""
     from thermex.case.reader import load_case
+    from thermex.exploration.measured_data import measured_alpha
     from thermex.exploration.sweep import sweep
     from thermex.report.exploration_files import sweep_files, sweep_text
     from thermex.report.files import write_folder
@@ -124,16 +129,3 @@ def chosen_executor(workers: int | None, scheduler: str | None) -> Iterator[Exec
             yield executor
     else:
         yield None
-
-
-def measured_alpha(case: Case, kelvin: float) -> tuple[float, float] | None:
-    """Return the measured linear coefficient and its uncertainty at one temperature, if there is one."""
-    if case.measured is None or not case.measured.material:
-        return None
-    from thermex.measured import best_measured, load_material
-
-    try:
-        found = best_measured(load_material(case.measured.material), "linear expansion coefficient", kelvin)
-    except InputError:
-        return None
-    return None if found is None else (found.value, found.uncertainty)

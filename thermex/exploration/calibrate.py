@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -70,6 +70,14 @@ class Calibration:
     predictions: int
     converged: bool
     warnings: tuple[str, ...]
+    at_bound: tuple[bool, ...]
+    """Whether each parameter stopped at an end of its range; its standard deviation then means nothing."""
+    kind: str
+    """Which answer was fitted: "quasi-harmonic" or "leading order"."""
+    held_out: tuple[Datum, ...] = ()
+    """Measured values of other quantities, not fitted."""
+    held_out_before: Array = field(default_factory=lambda: np.zeros(0))
+    held_out_after: Array = field(default_factory=lambda: np.zeros(0))
 
     @property
     def residuals(self) -> Array:
@@ -85,9 +93,9 @@ def _silent(stage: str, done: int, total: int) -> None:
 def model_value(point: Point, datum: Datum) -> float:
     """Return what a point predicts for a datum, in the datum's own convention."""
     if datum.quantity in {"elongation", "alpha_mean_per_K"}:
-        length = point.at("lattice_A", datum.temperature_K, datum.axis)
-        start = point.at("lattice_A", datum.reference_temperature_K, datum.axis)
-        stretch = length / start - 1.0
+        length = point.at("log_length", datum.temperature_K, datum.axis)
+        start = point.at("log_length", datum.reference_temperature_K, datum.axis)
+        stretch = float(np.expm1(length - start))
         return (
             stretch
             if datum.quantity == "elongation"
@@ -102,6 +110,7 @@ def calibrate(
     data: Sequence[Datum],
     *,
     bounds: Mapping[str, tuple[float, float]] | None = None,
+    held_out: Sequence[Datum] = (),
     accuracy: float = 2e-3,
     progress: Progress = _silent,
 ) -> Calibration:
@@ -113,6 +122,8 @@ def calibrate(
         Names such as "Mg-O.rho".
     bounds
         Lower and upper bound by name; by default 0.7 to 1.4 times the start.
+    held_out
+        Measured values that are not fitted, but shown before and after: what the fit does elsewhere.
     accuracy
         Numerical accuracy of α in the loop.
 
@@ -131,23 +142,26 @@ def calibrate(
     limits = np.array([(bounds or {}).get(n, _around(v)) for n, v in zip(parameters, start, strict=True)])
     base = replace(
         case,
-        conditions=replace(case.conditions, temperatures=_temperatures(data)),
+        conditions=replace(case.conditions, temperatures=_temperatures((*data, *held_out))),
         accuracy=replace(case.accuracy, alpha=accuracy),
     )
     measured = np.array([d.value for d in data])
     sigma = np.array([d.uncertainty for d in data])
-    seen: dict[bytes, Array] = {}
+    seen: dict[bytes, Point] = {}
 
-    def values_at(z: Array) -> Array:
+    def point_at(z: Array) -> Point:
         key = np.round(z, 12).tobytes()
         if key not in seen:
             trial = base
             for name, value in zip(parameters, z * scale, strict=True):
                 trial = with_parameter(trial, name, float(value))
-            point = evaluate(trial)
-            seen[key] = np.array([model_value(point, d) for d in data])
+            seen[key] = evaluate(trial)
             progress("predictions", len(seen), 20 * (len(parameters) + 1))
         return seen[key]
+
+    def values_at(z: Array) -> Array:
+        point = point_at(z)
+        return np.array([model_value(point, d) for d in data])
 
     def residual(z: Array) -> Array:
         raw = (values_at(z) - measured) / sigma
@@ -166,7 +180,15 @@ def calibrate(
         ftol=1e-6,
         max_nfev=25,
     )
-    return _result(case, parameters, data, start, scale, limits, fit, before, values_at(fit.x), len(seen))
+    result = _result(case, parameters, data, start, scale, limits, fit, before, values_at(fit.x), len(seen))
+    first, last = point_at(start / scale), point_at(fit.x)
+    return replace(
+        result,
+        kind=last.kind,
+        held_out=tuple(held_out),
+        held_out_before=np.array([model_value(first, d) for d in held_out]),
+        held_out_after=np.array([model_value(last, d) for d in held_out]),
+    )
 
 
 def _around(value: float) -> tuple[float, float]:
@@ -232,14 +254,29 @@ def _result(
         reduced_chi_squared=chi,
         predictions=predictions,
         converged=bool(fit.success),  # type: ignore[attr-defined]
-        warnings=_warnings(parameters, values, limits, normal, correlation),
+        warnings=_warnings(parameters, values, limits, normal, correlation, chi),
+        at_bound=tuple(_at_bound(v, low, high) for v, (low, high) in zip(values, limits, strict=True)),
+        kind="quasi-harmonic",
     )
 
 
+#: Above this reduced χ² the potential does not describe the data, however its parameters are chosen.
+POOR = 4.0
+
+
+def _at_bound(value: float, low: float, high: float) -> bool:
+    return bool(min(abs(value - low), abs(value - high)) < 1e-4 * (high - low))
+
+
 def _warnings(
-    parameters: Sequence[str], values: Array, limits: Array, normal: Array, correlation: Array
+    parameters: Sequence[str], values: Array, limits: Array, normal: Array, correlation: Array, chi: float
 ) -> tuple[str, ...]:
     out = []
+    if chi > POOR:
+        out.append(
+            f"The fit is poor: reduced χ² {chi:.3g}. Within these ranges the potential does not describe the data, "
+            "and the standard deviations are stretched by the root of it."
+        )
     root = np.sqrt(np.maximum(np.diag(normal), 1e-300))
     if np.linalg.cond(normal / np.outer(root, root)) > ILL_CONDITIONED:
         out.append("The data do not determine the parameters separately: fix one, or add data of another kind.")
@@ -248,6 +285,6 @@ def _warnings(
             if abs(correlation[i, j]) > 0.98:
                 out.append(f"{parameters[j]} and {parameters[i]} are correlated by {correlation[i, j]:+.3f}.")
     for name, value, (low, high) in zip(parameters, values, limits, strict=True):
-        if min(abs(value - low), abs(value - high)) < 1e-4 * (high - low):
+        if _at_bound(value, low, high):
             out.append(f"{name} = {value:.5g} lies at the edge of its range ({low:.5g} to {high:.5g}).")
     return tuple(out)

@@ -16,8 +16,12 @@ from thermex.exploration.sweep import _held
 
 Progress = Callable[[str, int, int], None]
 
-#: What can be matched, and its unit.
-QUANTITIES = {"alpha_linear_per_K": "1/K", "lattice_A": "Å", "bulk_modulus_T_GPa": "GPa"}
+#: What can be matched: its symbol, the factor to the unit shown, the unit, decimals.
+QUANTITIES = {
+    "alpha_linear_per_K": ("α", 1e6, "·10⁻⁶/K", 2),
+    "lattice_A": ("a", 1.0, " Å", 4),
+    "bulk_modulus_T_GPa": ("B_T", 1.0, " GPa", 1),
+}
 
 #: Points of the first look over the range.
 LOOKS = 9
@@ -44,6 +48,26 @@ class Match:
     looked_at: tuple[tuple[float, float], ...]
     """(parameter, quantity) of every point with an answer."""
     words: str
+    kind: str
+    """Which answer was matched: "quasi-harmonic", "leading order" or "sampled"."""
+    extrapolated: bool
+    """Whether the temperature lies past the range in which that method was tested."""
+    source: str = ""
+    """Where the target comes from."""
+
+
+def shown(quantity: str, value: float) -> str:
+    """Return a value with its symbol's unit and sensible digits."""
+    _, factor, unit, decimals = QUANTITIES[quantity]
+    return f"{value * factor:.{decimals}f}{unit}"
+
+
+def rounded_to(value: float, low: float | None, high: float | None) -> str:
+    """Return a value with the digits that its interval allows: two of half its width."""
+    half = 0.5 * abs(high - low) if low is not None and high is not None else 0.0
+    if half <= 0.0:
+        return f"{value:.5g}"
+    return f"{value:.{max(1 - int(np.floor(np.log10(half))), 0)}f}"
 
 
 def _silent(stage: str, done: int, total: int) -> None:
@@ -61,6 +85,7 @@ def match(
     low: float | None = None,
     high: float | None = None,
     hold: str = "parameters",
+    source: str = "",
     progress: Progress = _silent,
 ) -> Match:
     """Find the value of one parameter at which a quantity at one temperature equals a measured one.
@@ -87,11 +112,12 @@ def match(
     asked = tuple(sorted({0.0, 0.5 * temperature_K, temperature_K}))
     base = replace(base, conditions=replace(base.conditions, temperatures=asked))
     seen: dict[float, float] = {}
+    points: dict[float, Point] = {}
 
     def found(value: float) -> float:
         if value not in seen:
-            point: Point = evaluate(with_parameter(base, parameter, value))
-            seen[value] = point.at(quantity, temperature_K)
+            points[value] = evaluate(with_parameter(base, parameter, value))
+            seen[value] = points[value].at(quantity, temperature_K)
         return seen[value]
 
     values = np.linspace(start, stop, LOOKS)
@@ -110,6 +136,8 @@ def match(
         )
     nearest = min(answered, key=lambda row: abs(row[1] - target))
     best = at if at is not None else nearest[0]
+    low_end, high_end = (edges[0], edges[1]) if at is not None and len(edges) == 2 else (None, None)
+    point = points[min(points, key=lambda v: abs(v - best))]
     return Match(
         case=with_parameter(replace(base, conditions=case.conditions), parameter, best),
         parameter=parameter,
@@ -118,12 +146,15 @@ def match(
         target=target,
         target_uncertainty=uncertainty,
         value=at,
-        low=edges[0] if at is not None and len(edges) == 2 else None,
-        high=edges[1] if at is not None and len(edges) == 2 else None,
+        low=low_end,
+        high=high_end,
         nearest_value=nearest[0],
         nearest_quantity=nearest[1],
         looked_at=tuple(answered),
-        words=_words(parameter, quantity, temperature_K, target, at, nearest, (start, stop)),
+        words=_words(parameter, quantity, temperature_K, target, at, nearest, (start, stop), (low_end, high_end)),
+        kind=point.kind,
+        extrapolated=point.extrapolated(temperature_K),
+        source=source,
     )
 
 
@@ -149,11 +180,13 @@ def _words(
     value: float | None,
     nearest: tuple[float, float],
     span: tuple[float, float],
+    interval: tuple[float | None, float | None],
 ) -> str:
-    unit = QUANTITIES[quantity]
+    symbol = QUANTITIES[quantity][0]
     if value is not None:
-        return f"{parameter} = {value:.5g} gives {quantity} = {target:.5g} {unit} at {kelvin:g} K."
+        number = rounded_to(value, *interval)
+        return f"{parameter} = {number} gives {symbol} = {shown(quantity, target)} at {kelvin:g} K."
     return (
-        f"No {parameter} from {span[0]:g} to {span[1]:g} gives {quantity} = {target:.5g} {unit} at {kelvin:g} K; "
-        f"nearest is {nearest[1]:.5g} {unit} at {nearest[0]:.5g}."
+        f"No {parameter} from {span[0]:g} to {span[1]:g} gives {symbol} = {shown(quantity, target)} at {kelvin:g} K; "
+        f"nearest is {shown(quantity, nearest[1])} at {nearest[0]:.5g}."
     )

@@ -3,11 +3,43 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import dataclass
 
 import numpy as np
 
+from thermex.case.case import Case
+from thermex.errors import InputError
 from thermex.exploration.calibrate import Datum
+from thermex.measured import best_measured, load_material
 from thermex.measured.series import Series
+
+
+@dataclass(frozen=True, slots=True)
+class Target:
+    """A measured coefficient at one temperature."""
+
+    value: float
+    """1/K."""
+    uncertainty: float
+    """Standard deviation, 1/K; NaN where none is known."""
+    source: str
+
+    def words(self) -> str:
+        """Return the value with uncertainty and source."""
+        spread = f" ± {1e6 * self.uncertainty:.2f}" if np.isfinite(self.uncertainty) else ""
+        return f"α = {1e6 * self.value:.2f}{spread} ·10⁻⁶/K ({self.source})"
+
+
+def measured_alpha(case: Case, kelvin: float) -> Target | None:
+    """Return the measured linear coefficient of the case's material at one temperature, if there is one."""
+    if case.measured is None or not case.measured.material:
+        return None
+    try:
+        found = best_measured(load_material(case.measured.material), "linear expansion coefficient", kelvin)
+    except InputError:
+        return None
+    return None if found is None else Target(found.value, found.uncertainty, found.series.citation)
+
 
 #: Name of the measured quantity (and kind) → quantity of a datum.
 NAMES = {

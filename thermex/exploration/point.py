@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 
 from thermex.case.case import Case
+from thermex.comparison.modelled import modelled
 from thermex.errors import InputError, NoAnswerError
 from thermex.expansion import predict
 from thermex.prediction import Prediction
@@ -26,18 +27,29 @@ class Point:
     bulk_modulus_T_GPa: tuple[float | None, ...]
     heat_capacity_P_J_per_mol_K: tuple[float | None, ...]
     lattice_A: Mapping[str, tuple[float | None, ...]]
+    log_length: Mapping[str, tuple[float | None, ...]]
+    """ln L by axis ("" for V^{1/3}), without a step where the correction begins."""
     static_distance_A: float | None
     static_bulk_modulus_GPa: float | None
     valid_to_K: float | None
-    reason: str
+    valid_to_reason: str
     """What ends the branch, or why there is no answer."""
     answered: bool
     kind: str
     """"quasi-harmonic", "leading order" or "sampled"."""
+    starts_K: float | None
+    """From here on values are corrected; None without a correction."""
+    tested_to_K: float | None
+    """Above this temperature values are extrapolated; None where there is no such limit."""
+
+    def extrapolated(self, kelvin: float) -> bool:
+        """Whether a temperature lies past the range in which the method was tested."""
+        return self.tested_to_K is not None and kelvin > self.tested_to_K
 
     def at(self, quantity: str, kelvin: float, axis: str = "a") -> float:
         """Return a quantity at one temperature, NaN where there is none."""
-        rows: Any = self.lattice_A.get(axis, ()) if quantity == "lattice_A" else getattr(self, quantity)
+        by_axis = quantity in {"lattice_A", "log_length"}
+        rows: Any = getattr(self, quantity).get(axis, ()) if by_axis else getattr(self, quantity)
         values = np.array([np.nan if v is None else v for v in rows], dtype=float)
         good = np.isfinite(values)
         grid = np.array(self.temperature_K)[good]
@@ -61,7 +73,8 @@ def point_of(content: Mapping[str, Any]) -> Point:
         return tuple(value) if isinstance(value, list) else value
 
     fields = {k: frozen(v) for k, v in content.items()}
-    fields["lattice_A"] = {k: tuple(v) for k, v in content["lattice_A"].items()}
+    for name in ("lattice_A", "log_length"):
+        fields[name] = {k: tuple(v) for k, v in content[name].items()}
     return Point(**fields)
 
 
@@ -70,11 +83,29 @@ def evaluate(case: Case) -> Point:
     try:
         return reduced(predict(case))
     except (NoAnswerError, InputError) as error:
-        temperature = tuple(case.conditions.temperatures)
-        nothing = (None,) * len(temperature)
-        return Point(
-            temperature, nothing, nothing, nothing, nothing, nothing, {}, None, None, None, str(error), False, "none"
-        )
+        return _unanswered(tuple(case.conditions.temperatures), str(error))
+
+
+def _unanswered(temperature: tuple[float, ...], reason: str) -> Point:
+    nothing = (None,) * len(temperature)
+    return Point(
+        temperature_K=temperature,
+        alpha_linear_per_K=nothing,
+        alpha_relative_error=nothing,
+        gruneisen=nothing,
+        bulk_modulus_T_GPa=nothing,
+        heat_capacity_P_J_per_mol_K=nothing,
+        lattice_A={},
+        log_length={},
+        static_distance_A=None,
+        static_bulk_modulus_GPa=None,
+        valid_to_K=None,
+        valid_to_reason=reason,
+        answered=False,
+        kind="none",
+        starts_K=None,
+        tested_to_K=None,
+    )
 
 
 def reduced(prediction: Prediction) -> Point:
@@ -83,31 +114,22 @@ def reduced(prediction: Prediction) -> Point:
     def plain(values: Any) -> tuple[float | None, ...]:
         return tuple(float(v) if np.isfinite(v) else None for v in values)
 
-    corrected = prediction.anharmonic
-    alpha, error = prediction.alpha_linear_per_K, prediction.alpha_relative_error
-    lattice = dict(prediction.lattice_A)
-    gamma, bulk = prediction.gruneisen, prediction.bulk_modulus_T_GPa
-    heat = prediction.heat_capacity_P_J_per_mol_K
-    if corrected is not None:
-        there = np.isfinite(corrected.alpha_linear_per_K)
-        alpha = np.where(there, corrected.alpha_linear_per_K, alpha)
-        error = np.where(there, corrected.alpha_relative_error, error)
-        gamma = np.where(there, corrected.gruneisen, gamma)
-        bulk = np.where(there, corrected.bulk_modulus_T_GPa, bulk)
-        heat = np.where(there, corrected.heat_capacity_P_J_per_mol_K, heat)
-        lattice = {k: np.where(there, corrected.lattice_A[k], v) for k, v in lattice.items()}
+    m = modelled(prediction)
     return Point(
-        tuple(map(float, prediction.temperature_K)),
-        plain(alpha),
-        plain(error),
-        plain(gamma),
-        plain(bulk),
-        plain(heat),
-        {k: plain(v) for k, v in lattice.items()},
-        prediction.static.nearest_distance_A,
-        prediction.static.bulk_modulus_GPa,
-        prediction.valid_to_K,
-        prediction.valid_to_reason,
-        True,
-        corrected.kind if corrected is not None else "quasi-harmonic",
+        temperature_K=tuple(map(float, prediction.temperature_K)),
+        alpha_linear_per_K=plain(m.alpha),
+        alpha_relative_error=plain(m.relative_error),
+        gruneisen=plain(m.gruneisen),
+        bulk_modulus_T_GPa=plain(m.bulk_modulus),
+        heat_capacity_P_J_per_mol_K=plain(m.heat_pressure),
+        lattice_A={k: plain(v) for k, v in m.lattice.items()},
+        log_length={k: plain(v) for k, v in m.log_length.items()},
+        static_distance_A=prediction.static.nearest_distance_A,
+        static_bulk_modulus_GPa=prediction.static.bulk_modulus_GPa,
+        valid_to_K=prediction.valid_to_K,
+        valid_to_reason=prediction.valid_to_reason,
+        answered=True,
+        kind=m.kind,
+        starts_K=m.starts_K if np.isfinite(m.starts_K) else None,
+        tested_to_K=m.tested_to_K if np.isfinite(m.tested_to_K) else None,
     )

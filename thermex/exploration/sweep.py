@@ -21,6 +21,9 @@ from thermex.exploration.executor import InProcess
 from thermex.exploration.journal import Journal, open_journal
 from thermex.exploration.point import Point, evaluate, point_of
 
+#: What a journal line holds; a journal of another layout is not resumed.
+JOURNAL = "2"
+
 #: Told ("points", done, in all).
 Progress = Callable[[str, int, int], None]
 
@@ -87,7 +90,7 @@ def sweep(
         for name, value in zip(names, entry, strict=True):
             changed = with_parameter(changed, name, value)
         cases[_key(entry)] = changed
-    digest = hashlib.sha256("|".join([case_hash(base), hold, *names]).encode()).hexdigest()
+    digest = hashlib.sha256("|".join([JOURNAL, case_hash(base), hold, *names]).encode()).hexdigest()
     with open_journal(folder, digest) as journal:
         run_points(cases, journal, executor or InProcess(), progress)
         points = tuple(point_of(journal.done[_key(entry)]) for entry in grid)

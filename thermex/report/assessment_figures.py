@@ -104,7 +104,8 @@ def plot_ranking(ranked: Ranking, *, ax: Axes | None = None) -> Axes:
     values = np.array([100 * r.rms for r in ranked])
     good = np.isfinite(values)
     axes.barh(y[good], values[good], 0.6, color=BLUE)
-    axes.plot(np.zeros((~good).sum()), y[~good], "x", color=VERMILION, clip_on=False, label="no answer")
+    if (~good).any():
+        axes.plot(np.zeros((~good).sum()), y[~good], "x", color=VERMILION, clip_on=False, label="no answer")
     axes.axvline(100 * ranked.tolerance, color=BLACK, linewidth=1.0, linestyle="--", label="tolerance")
     axes.set_yticks(y, [f"{r.title[:40]}\n{r.kind}" for r in ranked], fontsize=8)
     axes.invert_yaxis()
