@@ -23,7 +23,9 @@ def add_parser(subparsers: Any, common: argparse.ArgumentParser) -> None:
         parents=[common],
         help="hold a potential against measured expansion, or rank several",
         description="Does this potential reproduce measured expansion, and if not, which physics is wrong? "
-        "With several cases, or --material, they are ranked against the same measurements.",
+        "With several cases, or --material, they are ranked against the same measurements. "
+        "Exit status: 0 done, 1 the tolerance was failed (with --strict), 2 wrong input, 3 no answer, 130 interrupted.",
+        epilog="Examples: thermex assess case.toml --out assessed; thermex assess --material MgO --to 1500",
     )
     parser.add_argument("cases", metavar="CASE", type=Path, nargs="*", help="case files (TOML)")
     parser.add_argument("--material", metavar="NAME", help="every published potential shipped for this material")

@@ -137,9 +137,11 @@ def _ends(prediction: Prediction) -> str:
         return "no valid temperature"
     first, last = int(good[0]), int(good[-1])
     alpha, kelvin = prediction.alpha_linear_per_K, prediction.temperature_K
+    best = best_alpha(prediction)[last]
+    corrected = f" ({micro(best)} with the anharmonic correction)" if best != alpha[last] else ""
     return (
         f"from {micro(alpha[first])} at {temperature(kelvin[first])} K "
-        f"to {micro(alpha[last])} at {temperature(kelvin[last])} K, in 10⁻⁶/K"
+        f"to {micro(alpha[last])}{corrected} at {temperature(kelvin[last])} K, in 10⁻⁶/K"
     )
 
 

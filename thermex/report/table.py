@@ -78,13 +78,15 @@ def _section(lines: list[str]) -> list[str]:
 def chosen_rows(prediction: Prediction, beside: Beside, most: int) -> list[int]:
     """Return the indices of the temperatures to show, at most ``most`` of them, ends included.
 
-    Among close temperatures that of a room, the last valid one and those with a measured α come first.
+    Among close temperatures that of a room, the last valid one and those with a measured α come first. Of
+    the temperatures past the end of the branch one is enough, to show that there is nothing.
     """
-    size = len(prediction.temperature_K)
+    good = np.flatnonzero(np.isfinite(prediction.alpha_linear_per_K))
+    size = min(len(prediction.temperature_K), int(good[-1]) + 2) if good.size else len(prediction.temperature_K)
     if size <= most:
         return list(range(size))
     anchors = _anchors(prediction)
-    measured = np.isfinite(beside.column("alpha_linear_per_K", size).value)
+    measured = np.isfinite(beside.column("alpha_linear_per_K", len(prediction.temperature_K)).value)
     reach = (size - 1) / (most - 1) / 2.0
     picked = [0]
     for middle in np.linspace(0, size - 1, most)[1:-1]:
