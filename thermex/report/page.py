@@ -34,7 +34,8 @@ th, td { padding: .25rem .6rem; text-align: right; border-bottom: 1px solid var(
 th { border-bottom: 2px solid var(--ink); vertical-align: bottom; font-weight: 600; white-space: normal;
   overflow-wrap: normal; max-width: 9em; }
 th small { display: block; font-weight: 400; color: var(--soft); }
-table.words td, table.words th { text-align: left; white-space: normal; vertical-align: top; }
+table.words td, table.words th { text-align: left; white-space: normal; vertical-align: top;
+  overflow-wrap: break-word; }
 pre { background: var(--band); padding: .8rem; font-size: .8rem; white-space: pre-wrap; }
 @media print { body { max-width: none; font-size: 10pt; padding: 0; } h2 { break-after: avoid; }
   tr, .lead, .caution { break-inside: avoid; } .wide { overflow: visible; } table { font-size: 8pt; }

@@ -93,7 +93,9 @@ def chosen_rows(prediction: Prediction, beside: Beside, most: int) -> list[int]:
         near = [k for k in range(picked[-1] + 1, size - 1) if abs(k - middle) <= reach]
         if near:
             picked.append(min(near, key=lambda k: (k not in anchors, not measured[k], abs(k - middle))))
-    return [*picked, size - 1]
+    for anchor in anchors - {*picked, size - 1}:
+        picked[min(range(1, len(picked)), key=lambda k: abs(picked[k] - anchor))] = anchor
+    return [*sorted(set(picked)), size - 1]
 
 
 def _anchors(prediction: Prediction) -> set[int]:
