@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import replace
 from typing import Any
 
@@ -10,6 +11,7 @@ import pytest
 
 from thermex.case.case import Accuracy, Case
 from thermex.case.published import case_from_published
+from thermex.case.reader import case_from_dict
 from thermex.errors import InputError
 from thermex.expansion import predict
 from thermex.prediction import Prediction
@@ -100,6 +102,37 @@ def test_sampled_is_refused_where_it_is_not_offered() -> None:
     case = replace(case_from_published("CEO2 B1a shell", (300.0,)), accuracy=Accuracy(anharmonic="sampled"))
     with pytest.raises(InputError, match="polarisable"):
         predict(case)
+
+
+def rutile() -> Case:
+    return case_from_published("MA91 TiO2", (300.0,))
+
+
+def copper_from_ase() -> Case:
+    crystal = {"prototype": "fcc", "sites": ["Cu"], "a": 3.6}
+    forces = {"calculator": "effective medium"}
+    return case_from_dict({"crystal": crystal, "potential": forces, "conditions": {"temperature": [300.0]}})
+
+
+@pytest.mark.parametrize(
+    ("case", "reason"),
+    [
+        (lambda: case_from_published("CEO2 B1a shell", (300.0,)), "polarisable"),
+        (rutile, "cubic"),
+        (copper_from_ase, "analytic pair potential"),
+    ],
+)
+def test_refusal_comes_before_any_work(case: Callable[[], Case], reason: str, monkeypatch: pytest.MonkeyPatch) -> None:
+    def never(*_: object) -> None:
+        raise AssertionError("work was done before the refusal")
+
+    monkeypatch.setattr("thermex.expansion.ground_of", never)
+    asked = replace(case(), accuracy=Accuracy(anharmonic="sampled"), source="some.toml")
+    with pytest.raises(InputError, match=reason) as caught:
+        predict(asked)
+    line = str(caught.value)
+    assert line.startswith('some.toml: accuracy.anharmonic: "sampled" is not offered')
+    assert '"none"' in line and "\n" not in line
 
 
 def test_sampled_is_reproducible_and_agrees_with_leading_order_in_the_cold() -> None:

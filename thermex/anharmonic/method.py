@@ -6,6 +6,7 @@ import os
 from collections.abc import Callable
 from concurrent.futures import Executor, ThreadPoolExecutor
 from dataclasses import dataclass, replace
+from multiprocessing import parent_process
 
 import numpy as np
 from numpy.typing import NDArray
@@ -18,6 +19,7 @@ from thermex.anharmonic.sampled_term import SampledFit
 from thermex.anharmonic.sampling import Outlook, Plan, Sampled, sample
 from thermex.case.case import Accuracy
 from thermex.chebyshev import Box
+from thermex.crystal.crystal import Crystal
 from thermex.errors import InputError, UnstableCrystalError
 from thermex.free_energy import Term
 from thermex.mesh import divisions_for
@@ -74,7 +76,7 @@ def method_error(
     debye_K
         θ_D; below a quarter of it no correction is given.
     executor
-        Runs the blocks of a sampling; two threads by default.
+        Runs the blocks of a sampling; by default two threads, one where this process is itself a worker.
 
     Raises
     ------
@@ -87,9 +89,9 @@ def method_error(
     rule = anharmonic_rule(base.effective, base.end_K)
     if accuracy.anharmonic == "none":
         return Method(rule, None, ())
-    reason = applicable(base.crystal, model) if model else "it needs an analytic pair potential"
-    if reason and accuracy.anharmonic == "sampled":
-        raise InputError(reason, where="accuracy.anharmonic", fix='"none" gives the quasi-harmonic answer')
+    if accuracy.anharmonic == "sampled":
+        refuse_sampling(base.crystal, model)
+    reason = untested(base.crystal, model)
     if reason or model is None:
         return Method(rule, None, (f"No anharmonic correction: {reason}.",))
     if accuracy.anharmonic == "sampled":
@@ -101,6 +103,25 @@ def method_error(
         return Method(rule, None, (f"No anharmonic correction: {error.what}.",))
     progress("anharmonicity", 1, 1)
     return Method(rule, correct(base, found, "leading order"), ())
+
+
+def untested(crystal: Crystal, model: PairModel | None) -> str | None:
+    """Return why no correction is offered, or None when it is; ``model`` is None for forces of a calculator."""
+    return applicable(crystal, model) if model else "it needs an analytic pair potential"
+
+
+def refuse_sampling(crystal: Crystal, model: PairModel | None, source: str = "") -> None:
+    """Raise :class:`InputError` with the reason where sampling is not offered.
+
+    Needs the crystal as the case gives it, no phonons.
+    """
+    reason = untested(crystal, model)
+    if reason:
+        raise InputError(
+            f'"sampled" is not offered for this case: {reason}',
+            where=f"{source}: accuracy.anharmonic" if source else "accuracy.anharmonic",
+            fix='"none" gives the quasi-harmonic answer with its rule',
+        )
 
 
 def quasiharmonic(travelled: Travelled, asked: Array, effective_K: Array, debye_K: float) -> Quasiharmonic:
@@ -144,7 +165,8 @@ def sampled(
     if executor is not None:
         found = sample(model, base.crystal, leading, outlook, plan, progress, executor.map)
     else:
-        with ThreadPoolExecutor(min(2, os.cpu_count() or 1)) as pool:
+        alone = parent_process() is not None
+        with ThreadPoolExecutor(1 if alone else min(2, os.cpu_count() or 1)) as pool:
             found = sample(model, base.crystal, leading, outlook, plan, progress, pool.map)
     return correct(base, found, "sampled", sampled_notes(found, accuracy))
 

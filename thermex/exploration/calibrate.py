@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
+from concurrent.futures import Executor
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -103,6 +104,7 @@ def calibrate(
     *,
     bounds: Mapping[str, tuple[float, float]] | None = None,
     accuracy: float = 2e-3,
+    executor: Executor | None = None,
     progress: Progress = _silent,
 ) -> Calibration:
     """Fit parameters of the potential to measured values (scipy.optimize.least_squares).
@@ -115,6 +117,8 @@ def calibrate(
         Lower and upper bound by name; by default 0.7 to 1.4 times the start.
     accuracy
         Numerical accuracy of α in the loop.
+    executor
+        Runs the blocks of a sampled anharmonicity; predictions follow one another.
 
     Raises
     ------
@@ -144,7 +148,7 @@ def calibrate(
             trial = base
             for name, value in zip(parameters, z * scale, strict=True):
                 trial = with_parameter(trial, name, float(value))
-            point = evaluate(trial)
+            point = evaluate(trial, executor)
             seen[key] = np.array([model_value(point, d) for d in data])
             progress("predictions", len(seen), 20 * (len(parameters) + 1))
         return seen[key]

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from concurrent.futures import Executor
 from dataclasses import dataclass, replace
 from itertools import pairwise
 
@@ -61,6 +62,7 @@ def match(
     low: float | None = None,
     high: float | None = None,
     hold: str = "parameters",
+    executor: Executor | None = None,
     progress: Progress = _silent,
 ) -> Match:
     """Find the value of one parameter at which a quantity at one temperature equals a measured one.
@@ -71,6 +73,8 @@ def match(
         "alpha_linear_per_K", "lattice_A" (axis a) or "bulk_modulus_T_GPa".
     low, high
         Range searched; by default 0.8 to 1.25 times the present value.
+    executor
+        Runs the blocks of a sampled anharmonicity; predictions follow one another.
 
     Raises
     ------
@@ -90,7 +94,7 @@ def match(
 
     def found(value: float) -> float:
         if value not in seen:
-            point: Point = evaluate(with_parameter(base, parameter, value))
+            point: Point = evaluate(with_parameter(base, parameter, value), executor)
             seen[value] = point.at(quantity, temperature_K)
         return seen[value]
 

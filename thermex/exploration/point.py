@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from concurrent.futures import Executor
 from dataclasses import asdict, dataclass
 from typing import Any
 
@@ -11,6 +12,7 @@ import numpy as np
 from thermex.case.case import Case
 from thermex.errors import InputError, NoAnswerError
 from thermex.expansion import predict
+from thermex.exploration.executor import InProcess
 from thermex.prediction import Prediction
 
 
@@ -65,10 +67,21 @@ def point_of(content: Mapping[str, Any]) -> Point:
     return Point(**fields)
 
 
-def evaluate(case: Case) -> Point:
-    """Predict one case; an answer that does not exist becomes a point with its reason."""
+def evaluate_alone(case: Case) -> Point:
+    """Predict one of many cases inside a worker: nothing of it starts workers of its own."""
+    return evaluate(case, InProcess())
+
+
+def evaluate(case: Case, executor: Executor | None = None) -> Point:
+    """Predict one case; an answer that does not exist becomes a point with its reason.
+
+    Parameters
+    ----------
+    executor
+        Runs the blocks of a sampled anharmonicity; two threads by default.
+    """
     try:
-        return reduced(predict(case))
+        return reduced(predict(case, executor=executor))
     except (NoAnswerError, InputError) as error:
         temperature = tuple(case.conditions.temperatures)
         nothing = (None,) * len(temperature)
