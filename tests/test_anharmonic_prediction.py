@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 import pytest
 
+from thermex.anharmonic.correction import TRUNCATION
 from thermex.case.case import Accuracy, Case
 from thermex.case.published import case_from_published
 from thermex.case.reader import case_from_dict
@@ -64,12 +65,16 @@ def test_says_where_it_is_large_and_where_extrapolated(by_default: Prediction) -
     assert any("extrapolated" in note for note in found.notes)
 
 
-def test_error_holds_its_own_numerical_part(by_default: Prediction) -> None:
-    found = by_default.anharmonic
-    assert found is not None
+def test_error_holds_numerical_part_and_truncation(by_default: Prediction) -> None:
+    found, rule = by_default.anharmonic, by_default.rule
+    assert found is not None and rule is not None
     good = np.isfinite(found.alpha_relative_error)
-    assert (found.alpha_relative_error[good] > 0.0).all()
-    assert found.alpha_relative_error[3] < 1e-3
+    left_out = TRUNCATION * rule.t[good] ** 3
+    numerical = np.sqrt(found.alpha_relative_error[good] ** 2 - left_out**2)
+    assert (numerical > 0.0).all()
+    assert numerical[2] < 1e-3  # 300 K
+    assert left_out[2] == pytest.approx(0.8 * (313.5 / 820.8) ** 3, rel=0.01)  # T_eff/T_end
+    assert any("higher orders" in note and "fluorite" in note for note in found.notes)
 
 
 def test_thermodynamic_identities_hold_with_the_term(by_default: Prediction) -> None:
@@ -144,5 +149,6 @@ def test_sampled_is_reproducible_and_agrees_with_leading_order_in_the_cold() -> 
     assert first.kind == "sampled"
     np.testing.assert_array_equal(first.alpha_linear_per_K, second.alpha_linear_per_K)
     assert any("seed 7" in note for note in first.notes)
+    assert any("statistical" in note and "finite cell" in note for note in first.notes)
     np.testing.assert_allclose(first.lattice_A["a"], leading.lattice_A["a"], rtol=3e-4)
     assert (first.alpha_linear_per_K > leading.alpha_linear_per_K).all()
