@@ -8,9 +8,12 @@ from typing import Any
 
 import pytest
 
+from thermex.anharmonic.method import was_interrupted
 from thermex.anharmonic.sampling import work
 from thermex.case.case import Accuracy, Case
 from thermex.case.published import case_from_published
+from thermex.commands.interruption import Interrupted
+from thermex.expansion import predict
 from thermex.exploration.executor import InProcess, local_workers
 from thermex.exploration.match import match
 from thermex.exploration.point import evaluate
@@ -44,6 +47,24 @@ class Counting(Executor):
     def submit(self, fn: Any, /, *args: Any, **kwargs: Any) -> Future[Any]:
         self.given.append(fn)
         return InProcess().submit(fn, *args, **kwargs)
+
+
+class Impatient(Counting):
+    """Is interrupted, as by Ctrl-C, once it has been given sixteen blocks."""
+
+    def submit(self, fn: Any, /, *args: Any, **kwargs: Any) -> Future[Any]:
+        if len(self.given) == 16:
+            raise KeyboardInterrupt
+        return super().submit(fn, *args, **kwargs)
+
+
+def test_interruption_keeps_a_prediction_but_no_point(argon: Case, monkeypatch: pytest.MonkeyPatch) -> None:
+    endless = replace(argon, accuracy=replace(argon.accuracy, sampled_error=1e-9))
+    found = predict(endless, executor=Impatient()).anharmonic
+    assert found is not None and was_interrupted(found)
+    monkeypatch.setattr("thermex.exploration.point.predict", lambda case, executor: predict(case, executor=Impatient()))
+    with pytest.raises(Interrupted, match="0 of 2 points are kept"):
+        sweep(endless, EPSILON, [0.0100, 0.0104])
 
 
 def test_blocks_of_one_prediction_go_to_the_executor(argon: Case, no_pool: None) -> None:

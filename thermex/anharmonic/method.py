@@ -40,6 +40,10 @@ JUDGED = 0.95
 HIGHEST = 1.25
 
 
+#: How the note on a sampling that was cut short begins.
+INTERRUPTED = "The sampling was interrupted"
+
+
 @dataclass(frozen=True, slots=True)
 class Method:
     """The rule at every temperature, the correction if there is one, and what is to be said."""
@@ -213,6 +217,11 @@ def outlook_on(base: Quasiharmonic, highest: float) -> Outlook:
     return Outlook(strain, error)
 
 
+def was_interrupted(found: Anharmonic | None) -> bool:
+    """Return whether a correction comes from a sampling that was cut short."""
+    return found is not None and any(note.startswith(INTERRUPTED) for note in found.notes)
+
+
 def sampled_notes(found: Sampled, accuracy: Accuracy) -> tuple[str, ...]:
     """Say how the sampling was done and how well it went."""
     notes = [
@@ -221,7 +230,7 @@ def sampled_notes(found: Sampled, accuracy: Accuracy) -> tuple[str, ...]:
         f"{found.accepted:.0%} accepted, seed {accuracy.seed}."
     ]
     if found.interrupted:
-        notes.append(f"The sampling was interrupted: the error of α reached {found.error:.1%}.")
+        notes.append(f"{INTERRUPTED}: the error of α reached {found.error:.1%}.")
     elif found.error > accuracy.sampled_error:
         notes.append(f"The sampling stopped at an error of α of {found.error:.1%}.")
     return tuple(notes)

@@ -9,6 +9,7 @@ from typing import Any
 
 import numpy as np
 
+from thermex.anharmonic.method import was_interrupted
 from thermex.case.case import Case
 from thermex.errors import InputError, NoAnswerError
 from thermex.expansion import predict
@@ -79,9 +80,17 @@ def evaluate(case: Case, executor: Executor | None = None) -> Point:
     ----------
     executor
         Runs the blocks of a sampled anharmonicity; two threads by default.
+
+    Raises
+    ------
+    KeyboardInterrupt
+        Interrupted, in a sampling too: one prediction keeps what was sampled, a point of many does not.
     """
     try:
-        return reduced(predict(case, executor=executor))
+        prediction = predict(case, executor=executor)
+        if was_interrupted(prediction.anharmonic):
+            raise KeyboardInterrupt
+        return reduced(prediction)
     except (NoAnswerError, InputError) as error:
         temperature = tuple(case.conditions.temperatures)
         nothing = (None,) * len(temperature)
