@@ -4,10 +4,9 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from anharmonic_cases import case
+from anharmonic_cases import case, reference
 
 from thermex.anharmonic.correlation import (
-    PeriodicCrystal,
     inverse_fourier,
     on_mesh,
     periodic_crystal,
@@ -31,35 +30,49 @@ from thermex.potential.model import Interaction, Kind, PairModel, Spring
 from thermex.potential.terms import Exponential, Spline, Tapered
 
 
-def sampled_limit(supercell: tuple[PeriodicCrystal, int], model: PairModel, rows: list[dict[str, float]]):
-    """Return D/(k_BT)² of the reference runs over F₂′ of the same supercell, extrapolated to T → 0."""
-    periodic, multiple = supercell
-    crystal = periodic.crystal
+def forces_of_same_setup(name: str) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+    """Return T, sampled D/(k_BT)² of the four coldest reference rows and our two parts (4, 2) for its very setup.
+
+    That is 3×3×3 conventional cells (N = 108 or 216) and pair residuals to ``rcut_a`` lattice parameters,
+    as anharmonic.json states.
+    """
+    model, crystal, rows = case(name)
+    stated = reference("anharmonic.json")[name]
+    conventional = conventional_crystal(crystal)
+    assert 27 * conventional.size == stated["N"]
+    periodic = periodic_crystal(model, conventional, (3, 3, 3))
     a0 = crystal.lattice_parameters[0]
-    bare = bare_bonds(model, model.particles(crystal), 5.05 * nearest_bond(crystal))
-    ratios, temperatures = [], []
+    bare = bare_bonds(model, model.particles(conventional), 1.01 * stated["rcut_a"] * a0)
+    share = crystal.size / conventional.size
+    parts = []
     for row in rows[:4]:
         x, h = np.log(row["a_classical_exact"] / a0), 1e-3
-        high, low = (sum(leading_parts(periodic, bare, x + s * h)) for s in (1, -1))
-        ratios.append(row["D_over_kT2"] * multiple * 2.0 * h / (high - low))
-        temperatures.append(row["T"])
-    return float(np.polynomial.Polynomial.fit(temperatures, ratios, 2)(0.0))
+        high, low = (np.array(leading_parts(periodic, bare, x + s * h)) for s in (1, -1))
+        parts.append(share * (high - low) / (2.0 * h))
+    return np.array([r["T"] for r in rows[:4]]), np.array([r["D_over_kT2"] for r in rows[:4]]), np.array(parts)
+
+
+def at_zero(temperature: np.ndarray, values: np.ndarray) -> float:
+    return float(np.polynomial.Polynomial.fit(temperature, values, 2)(0.0))
 
 
 @pytest.mark.parametrize("name", ["S1", "S2", "S3"])
-def test_agrees_with_sampled_force_in_the_limit_of_low_temperature(name: str) -> None:
-    # D_over_kT2 of anharmonic.json: hybrid Monte Carlo in a cell of 3×3×3 conventional cells
-    model, crystal, rows = case(name)
-    conventional = conventional_crystal(crystal)
-    periodic = periodic_crystal(model, conventional, (3, 3, 3))
-    limit = sampled_limit((periodic, conventional.size // crystal.size), model, rows)
-    assert limit == pytest.approx(1.0, abs=0.01)
+def test_agrees_with_sampled_force_of_the_same_setup_in_the_limit_of_low_temperature(name: str) -> None:
+    # D_over_kT2 of anharmonic.json, hybrid Monte Carlo: ratios 1.004, 0.996, 1.002; 0.4 % is the statistics of one row
+    temperature, force, parts = forces_of_same_setup(name)
+    assert at_zero(temperature, force / parts.sum(axis=1)) == pytest.approx(1.0, abs=0.01)
+
+
+def test_agrees_with_sampled_force_of_copper() -> None:
+    """The parts cancel in copper: what is left at T → 0 is within 1 % of either, the error of the sampling."""
+    temperature, force, parts = forces_of_same_setup("S5")
+    assert abs(at_zero(temperature, force - parts.sum(axis=1))) < 0.01 * np.abs(parts).min()
 
 
 @pytest.mark.parametrize(("name", "tolerance"), [("S3", 0.02), ("S2", 0.04), ("S1", 0.04)])
 def test_near_the_leading_order_sums_of_the_reference(name: str, tolerance: float) -> None:
-    # D2_leading of anharmonic.json, which holds a few per cent of mesh and shell error: the sampled
-    # values of the same file extrapolate to this sum within 1 % (test above)
+    # D2_leading of anharmonic.json. 2 % was wanted; NaCl and MgO miss it by 1.5 % because D2_leading is too
+    # high by 3.5 and 2.7 %: test_anharmonic_reference.py shows it with the simulated forces of the same file
     model, crystal, rows = case(name)
     x = np.log([r["a_classical_exact"] / crystal.lattice_parameters[0] for r in rows[:4]])
     found = leading_order(model, crystal, np.array([[-0.002, x[-1] + 0.002]])).best.value(x)[1]

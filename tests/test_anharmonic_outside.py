@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+from functools import cache
 from typing import Any
 
 import numpy as np
@@ -10,6 +11,7 @@ import pytest
 from classical_crystal import ClassicalCrystal, classical_crystal
 
 from thermex import data
+from thermex.anharmonic.correction import TRUNCATION
 from thermex.anharmonic.leading_order import leading_order
 from thermex.case.published import case_from_published
 from thermex.crystal.build import build_crystal
@@ -23,6 +25,7 @@ def check_of(family: str, name: str) -> dict[str, Any]:
     return found
 
 
+@cache
 def followed(name: str, highest: float) -> ClassicalCrystal:
     case = case_from_published(name, (300.0,))
     crystal = build_crystal(case.crystal)
@@ -78,6 +81,19 @@ def test_urania_where_anharmonicity_is_small(name: str) -> None:
     plain, _, corrected, _ = corrected_and_not(name, temperature)
     np.testing.assert_allclose(plain, published, rtol=0.025)
     np.testing.assert_allclose(corrected, published, rtol=0.025)
+
+
+@pytest.mark.parametrize("name", [*NEARER, "UO2 Basak-03"])
+def test_urania_is_within_the_stated_truncation(name: str) -> None:
+    """Held out when the factor was chosen. Stated against found, %: Busker-02 8.0 2.0; Arima-05 5.5 4.7 and
+    18.5 4.1; Yakub-09 5.5 −0.8 and 18.7 −2.7; Lewis-85 2.5 1.3 and 8.4 8.0; Nekrasov-08 32.9 −8.7;
+    Basak-03 25.4 −1.5."""
+    polynomial = np.poly1d(check_of("uo2", name)["molecular_dynamics_a_A"]["polynomial_T3_T2_T1_T0"])
+    temperature = np.array(NEARER.get(name, (1000.0,)))
+    published = polynomial.deriv()(temperature) / polynomial(temperature)
+    _, _, corrected, _ = corrected_and_not(name, temperature)
+    t = temperature / followed(name, 1.05 * temperature[-1]).travelled.end_K
+    assert (np.abs(corrected / published - 1.0) < TRUNCATION * t**3).all()
 
 
 # S. Grieshammer et al., Solid State Ionics 355, 115405 (2020), tables: mean α between 300 and 1000 K by

@@ -2,14 +2,17 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import replace
 from typing import Any
 
 import numpy as np
 import pytest
 
+from thermex.anharmonic.correction import TRUNCATION
 from thermex.case.case import Accuracy, Case
 from thermex.case.published import case_from_published
+from thermex.case.reader import case_from_dict
 from thermex.errors import InputError
 from thermex.expansion import predict
 from thermex.prediction import Prediction
@@ -35,7 +38,8 @@ def test_leading_order_is_the_default(by_default: Prediction) -> None:
     cold = np.array(TEMPERATURES) < found.starts_K
     assert cold.any()
     for values in (found.alpha_linear_per_K, found.lattice_A["a"], found.gruneisen, found.bulk_modulus_T_GPa):
-        assert (np.isfinite(values) != cold).all()
+        # 700 K is T_eff/T_end = 0.85: the own error of the leading order is too large there to print it
+        assert (np.isfinite(values) != (cold | (np.array(TEMPERATURES) == 700.0))).all()
 
 
 def test_salt_with_anharmonicity_meets_the_measured_value(by_default: Prediction) -> None:
@@ -62,12 +66,16 @@ def test_says_where_it_is_large_and_where_extrapolated(by_default: Prediction) -
     assert any("extrapolated" in note for note in found.notes)
 
 
-def test_error_holds_its_own_numerical_part(by_default: Prediction) -> None:
-    found = by_default.anharmonic
-    assert found is not None
+def test_error_holds_numerical_part_and_truncation(by_default: Prediction) -> None:
+    found, rule = by_default.anharmonic, by_default.rule
+    assert found is not None and rule is not None
     good = np.isfinite(found.alpha_relative_error)
-    assert (found.alpha_relative_error[good] > 0.0).all()
-    assert found.alpha_relative_error[3] < 1e-3
+    left_out = TRUNCATION * rule.t[good] ** 3
+    numerical = np.sqrt(found.alpha_relative_error[good] ** 2 - left_out**2)
+    assert (numerical > 0.0).all()
+    assert numerical[2] < 1e-3  # 300 K
+    assert left_out[2] == pytest.approx(0.8 * (313.5 / 820.8) ** 3, rel=0.01)  # T_eff/T_end
+    assert any("higher orders" in note and "fluorite" in note for note in found.notes)
 
 
 def test_thermodynamic_identities_hold_with_the_term(by_default: Prediction) -> None:
@@ -102,6 +110,37 @@ def test_sampled_is_refused_where_it_is_not_offered() -> None:
         predict(case)
 
 
+def rutile() -> Case:
+    return case_from_published("MA91 TiO2", (300.0,))
+
+
+def copper_from_ase() -> Case:
+    crystal = {"prototype": "fcc", "sites": ["Cu"], "a": 3.6}
+    forces = {"calculator": "effective medium"}
+    return case_from_dict({"crystal": crystal, "potential": forces, "conditions": {"temperature": [300.0]}})
+
+
+@pytest.mark.parametrize(
+    ("case", "reason"),
+    [
+        (lambda: case_from_published("CEO2 B1a shell", (300.0,)), "polarisable"),
+        (rutile, "cubic"),
+        (copper_from_ase, "analytic pair potential"),
+    ],
+)
+def test_refusal_comes_before_any_work(case: Callable[[], Case], reason: str, monkeypatch: pytest.MonkeyPatch) -> None:
+    def never(*_: object) -> None:
+        raise AssertionError("work was done before the refusal")
+
+    monkeypatch.setattr("thermex.expansion.ground_of", never)
+    asked = replace(case(), accuracy=Accuracy(anharmonic="sampled"), source="some.toml")
+    with pytest.raises(InputError, match=reason) as caught:
+        predict(asked)
+    line = str(caught.value)
+    assert line.startswith('some.toml: accuracy.anharmonic: "sampled" is not offered')
+    assert '"none"' in line and "\n" not in line
+
+
 def test_sampled_is_reproducible_and_agrees_with_leading_order_in_the_cold() -> None:
     argon = case_from_published("LJ58 Ar", (25.0, 35.0))
     accuracy = Accuracy(anharmonic="sampled", sampled_error=0.03, seed=7)
@@ -111,5 +150,6 @@ def test_sampled_is_reproducible_and_agrees_with_leading_order_in_the_cold() -> 
     assert first.kind == "sampled"
     np.testing.assert_array_equal(first.alpha_linear_per_K, second.alpha_linear_per_K)
     assert any("seed 7" in note for note in first.notes)
+    assert any("statistical" in note and "finite cell" in note for note in first.notes)
     np.testing.assert_allclose(first.lattice_A["a"], leading.lattice_A["a"], rtol=3e-4)
     assert (first.alpha_linear_per_K > leading.alpha_linear_per_K).all()

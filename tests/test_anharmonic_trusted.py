@@ -22,7 +22,10 @@ def test_values_with_a_large_error_are_blanked_in_every_array() -> None:
     hot = prediction.temperature_K > 1000.0
     assert np.isnan(kept.alpha_linear_per_K[hot]).all() and np.isnan(kept.lattice_A["a"][hot]).all()
     assert kept.alpha_linear_per_K[~hot] == pytest.approx(found.alpha_linear_per_K[~hot], nan_ok=True)
-    assert "left out from 1050 to 2000 K" in kept.notes[0]
+    assert "left out from 1050 K on" in kept.notes[0]
+    cold = replace(found, alpha_relative_error=np.where(prediction.temperature_K == 500.0, 1.0, 0.01))
+    nothing = trusted(cold, prediction.temperature_K)
+    assert np.isnan(nothing.alpha_linear_per_K).all() and "at every temperature" in nothing.notes[0]
     assert trusted(replace(found, alpha_relative_error=0.0 * error), prediction.temperature_K).notes == found.notes
 
 

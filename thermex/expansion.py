@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from concurrent.futures import Executor
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from thermex import modes, oscillators
-from thermex.anharmonic.method import Method, method_error
+from thermex.anharmonic.method import Method, method_error, refuse_sampling
 from thermex.calculator_lattice import named_calculator
 from thermex.case.case import Case
 from thermex.chebyshev import Box
@@ -47,7 +48,7 @@ def _silent(stage: str, done: int, total: int) -> None:
     """Report nothing."""
 
 
-def predict(case: Case, *, progress: Progress = _silent) -> Prediction:
+def predict(case: Case, *, progress: Progress = _silent, executor: Executor | None = None) -> Prediction:
     """Predict the thermal expansion of a case.
 
     Parameters
@@ -56,6 +57,9 @@ def predict(case: Case, *, progress: Progress = _silent) -> Prediction:
         Crystal, potential, temperatures and accuracy; see :func:`thermex.load_case`.
     progress
         Told ``(stage, steps done, steps in all)``.
+    executor
+        Anything shaped like ``concurrent.futures.Executor``: runs the blocks of a sampled anharmonicity;
+        two threads by default. Nothing else of a prediction is handed to it.
 
     Raises
     ------
@@ -68,6 +72,7 @@ def predict(case: Case, *, progress: Progress = _silent) -> Prediction:
     """
     watch = Stopwatch()
     crystal = build_crystal(case.crystal)
+    refuse_untested(case, crystal)
     ground, model = ground_of(case, crystal)
     watch.lap("static lattice")
     asked = np.array(case.conditions.temperatures, dtype=float)
@@ -77,9 +82,16 @@ def predict(case: Case, *, progress: Progress = _silent) -> Prediction:
     sampled = sample_modes(travelled)
     watch.lap("modes")
     effective = effective_temperature(travelled)
-    method = method_error(case.accuracy, model, travelled, asked, effective, sampled.debye_moment_K, progress)
+    method = method_error(case.accuracy, model, travelled, asked, effective, sampled.debye_moment_K, progress, executor)
     watch.lap("anharmonic correction")
     return assemble(case, model, ground, travelled, sampled, method, grid, watch.seconds)
+
+
+def refuse_untested(case: Case, crystal: Crystal) -> None:
+    """Raise :class:`InputError` when sampling is asked for where it is not offered, before anything is computed."""
+    if case.accuracy.anharmonic == "sampled":
+        from_calculator = bool(case.potential.calculator) or not case.potential.pairs
+        refuse_sampling(crystal, None if from_calculator else pair_model(case.potential, crystal), case.source)
 
 
 def ground_of(case: Case, crystal: Crystal) -> tuple[Ground, PairModel | None]:

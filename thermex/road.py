@@ -219,7 +219,8 @@ def _solve(lattice: Lattice, branch: Branch, load: Load, wanted: Array, accuracy
         if not (finer_mesh or more_volumes):
             break
         mesh, volumes = mesh + int(finer_mesh), volumes + int(more_volumes)
-    return _with_cold(lattice, solution, load, wanted, accuracy)
+    far = wanted < JUDGED * (branch.end_K if branch.ends else np.inf)
+    return _with_cold(lattice, solution, load, wanted, accuracy, far)
 
 
 def _mesh_share(branch: Branch) -> float:
@@ -227,13 +228,16 @@ def _mesh_share(branch: Branch) -> float:
     return convergence.SOFT_SHARE if soft else convergence.MESH_SHARE
 
 
-def _with_cold(lattice: Lattice, solution: Solution, load: Load, wanted: Array, accuracy: float) -> Solution:
+def _with_cold(
+    lattice: Lattice, solution: Solution, load: Load, wanted: Array, accuracy: float, far: NDArray[np.bool_]
+) -> Solution:
     """Replace cold temperatures whose error exceeds the accuracy by solutions on finer meshes.
 
+    Next to the end of the branch (where ``far`` is False) the error grows by nature and no mesh helps.
     First a finer graded mesh, then meshes graded twice, on which α ∝ T³ holds down to T → 0.
     """
     for divisions, order in COLD_MESHES:
-        poor = (wanted > 0.0) & (solution.error.mesh > accuracy)
+        poor = (wanted > 0.0) & far & (solution.error.mesh > accuracy)
         if not poor.any():
             break
         highest = float(solution.states.x[poor, 0].max())

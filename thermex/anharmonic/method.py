@@ -6,6 +6,7 @@ import os
 from collections.abc import Callable
 from concurrent.futures import Executor, ThreadPoolExecutor
 from dataclasses import dataclass, replace
+from multiprocessing import parent_process
 
 import numpy as np
 from numpy.typing import NDArray
@@ -20,6 +21,7 @@ from thermex.anharmonic.trusted import trusted
 from thermex.branch import IMAGINARY
 from thermex.case.case import Accuracy
 from thermex.chebyshev import Box
+from thermex.crystal.crystal import Crystal
 from thermex.errors import InputError, UnstableCrystalError
 from thermex.free_energy import Term
 from thermex.mesh import divisions_for
@@ -38,6 +40,10 @@ JUDGED = 0.95
 
 #: Above this multiple of T_end nothing is sampled.
 HIGHEST = 1.25
+
+
+#: How the note on a sampling that was cut short begins.
+INTERRUPTED = "The sampling was interrupted"
 
 
 @dataclass(frozen=True, slots=True)
@@ -76,7 +82,7 @@ def method_error(
     debye_K
         θ_D; below a quarter of it no correction is given.
     executor
-        Runs the blocks of a sampling; two threads by default.
+        Runs the blocks of a sampling; by default two threads, one where this process is itself a worker.
 
     Raises
     ------
@@ -90,9 +96,9 @@ def method_error(
     rule = no_rule(base.effective, WORDS_IMAGINARY) if imaginary else anharmonic_rule(base.effective, base.end_K)
     if accuracy.anharmonic == "none":
         return Method(rule, None, ())
-    reason = applicable(base.crystal, model) if model else "it needs an analytic pair potential"
-    if reason and accuracy.anharmonic == "sampled":
-        raise InputError(reason, where="accuracy.anharmonic", fix='"none" gives the quasi-harmonic answer')
+    if accuracy.anharmonic == "sampled":
+        refuse_sampling(base.crystal, model)
+    reason = untested(base.crystal, model)
     if reason or model is None:
         return Method(rule, None, (f"No anharmonic correction: {reason}.",))
     starts = COLDEST * base.debye_K
@@ -115,6 +121,25 @@ def _checked(rule: AnharmonicRule, found: Anharmonic, asked: Array) -> Method:
     if np.isfinite(kept.alpha_linear_per_K).any():
         return Method(rule, kept, ())
     return Method(rule, None, kept.notes)
+
+
+def untested(crystal: Crystal, model: PairModel | None) -> str | None:
+    """Return why no correction is offered, or None when it is; ``model`` is None for forces of a calculator."""
+    return applicable(crystal, model) if model else "it needs an analytic pair potential"
+
+
+def refuse_sampling(crystal: Crystal, model: PairModel | None, source: str = "") -> None:
+    """Raise :class:`InputError` with the reason where sampling is not offered.
+
+    Needs the crystal as the case gives it, no phonons.
+    """
+    reason = untested(crystal, model)
+    if reason:
+        raise InputError(
+            f'"sampled" is not offered for this case: {reason}',
+            where=f"{source}: accuracy.anharmonic" if source else "accuracy.anharmonic",
+            fix='"none" gives the quasi-harmonic answer with its rule',
+        )
 
 
 def quasiharmonic(travelled: Travelled, asked: Array, effective_K: Array, debye_K: float) -> Quasiharmonic:
@@ -158,7 +183,8 @@ def sampled(
     if executor is not None:
         found = sample(model, base.crystal, leading, outlook, plan, progress, executor.map)
     else:
-        with ThreadPoolExecutor(min(2, os.cpu_count() or 1)) as pool:
+        alone = parent_process() is not None
+        with ThreadPoolExecutor(1 if alone else min(2, os.cpu_count() or 1)) as pool:
             found = sample(model, base.crystal, leading, outlook, plan, progress, pool.map)
     return correct(base, found, "sampled", sampled_notes(found, accuracy))
 
@@ -205,6 +231,11 @@ def outlook_on(base: Quasiharmonic, highest: float) -> Outlook:
     return Outlook(strain, error)
 
 
+def was_interrupted(found: Anharmonic | None) -> bool:
+    """Return whether a correction comes from a sampling that was cut short."""
+    return found is not None and any(note.startswith(INTERRUPTED) for note in found.notes)
+
+
 def sampled_notes(found: Sampled, accuracy: Accuracy) -> tuple[str, ...]:
     """Say how the sampling was done and how well it went."""
     notes = [
@@ -213,7 +244,7 @@ def sampled_notes(found: Sampled, accuracy: Accuracy) -> tuple[str, ...]:
         f"{found.accepted:.0%} accepted, seed {accuracy.seed}."
     ]
     if found.interrupted:
-        notes.append(f"The sampling was interrupted: the error of α reached {found.error:.1%}.")
+        notes.append(f"{INTERRUPTED}: the error of α reached {found.error:.1%}.")
     elif found.error > accuracy.sampled_error:
         notes.append(f"The sampling stopped at an error of α of {found.error:.1%}.")
     return tuple(notes)

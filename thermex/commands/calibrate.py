@@ -51,7 +51,7 @@ def add_parser(subparsers: Any, common: argparse.ArgumentParser) -> None:
         metavar="NAME=LOW,HIGH",
         help="range of a parameter (0.7 to 1.4 times its value)",
     )
-    parser.add_argument("--anharmonic", choices=("none", "leading order"), help=CORRECTION)
+    parser.add_argument("--anharmonic", choices=("none", "leading order", "sampled"), help=CORRECTION)
     parser.add_argument("--out", metavar="FOLDER", type=Path, help="write results and the new case here")
     parser.set_defaults(run=run)
 

@@ -41,7 +41,7 @@ def add_parser(subparsers: Any, common: argparse.ArgumentParser) -> None:
         "--to", dest="high", type=float, metavar="V", help="upper end of the range (1.25 times the present value)"
     )
     parser.add_argument("--hold", choices=("parameters", "distance"), default="parameters", help="as in sweep")
-    parser.add_argument("--anharmonic", choices=("none", "leading order"), help=CORRECTION)
+    parser.add_argument("--anharmonic", choices=("none", "leading order", "sampled"), help=CORRECTION)
     parser.add_argument("--out", metavar="FOLDER", type=Path, help="write results and the new case here")
     parser.set_defaults(run=run)
 

@@ -14,10 +14,7 @@ from thermex.commands.predict import with_anharmonic
 from thermex.commands.progress import progress_on
 from thermex.errors import InputError
 
-CORRECTION = (
-    "correction of α in place of the case's (by default leading order where it is tested); sampling, which takes "
-    "seconds a point, is for predict and assess"
-)
+CORRECTION = "correction of α in place of the case's (by default leading order where it is tested)"
 EXITS = "Exit status: 0 done, 2 wrong input, 3 no answer, 130 interrupted."
 
 
@@ -44,7 +41,7 @@ def add_parser(subparsers: Any, common: argparse.ArgumentParser) -> None:
         help="keep the other parameters, or the static nearest-neighbour distance (amplitude solved again); parameters",
     )
     parser.add_argument("--at", type=float, default=300.0, metavar="T", help="temperature of the table, K (300)")
-    parser.add_argument("--anharmonic", choices=("none", "leading order"), help=CORRECTION)
+    parser.add_argument("--anharmonic", choices=("none", "leading order", "sampled"), help=CORRECTION)
     parser.add_argument("--workers", type=int, metavar="N", help="local worker processes")
     parser.add_argument("--scheduler", metavar="ADDRESS", help="a running Dask scheduler")
     parser.add_argument("--out", metavar="FOLDER", type=Path, help="write results here; the same command resumes")

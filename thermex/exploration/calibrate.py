@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
+from concurrent.futures import Executor
 from dataclasses import dataclass, field, replace
 
 import numpy as np
@@ -112,6 +113,7 @@ def calibrate(
     bounds: Mapping[str, tuple[float, float]] | None = None,
     held_out: Sequence[Datum] = (),
     accuracy: float = 2e-3,
+    executor: Executor | None = None,
     progress: Progress = _silent,
 ) -> Calibration:
     """Fit parameters of the potential to measured values (scipy.optimize.least_squares).
@@ -126,6 +128,8 @@ def calibrate(
         Measured values that are not fitted, but shown before and after: what the fit does elsewhere.
     accuracy
         Numerical accuracy of α in the loop.
+    executor
+        Runs the blocks of a sampled anharmonicity; predictions follow one another.
 
     Raises
     ------
@@ -155,7 +159,7 @@ def calibrate(
             trial = base
             for name, value in zip(parameters, z * scale, strict=True):
                 trial = with_parameter(trial, name, float(value))
-            seen[key] = evaluate(trial)
+            seen[key] = evaluate(trial, executor)
             progress("predictions", len(seen), 20 * (len(parameters) + 1))
         return seen[key]
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from concurrent.futures import Executor
 from dataclasses import dataclass, replace
 from itertools import pairwise
 
@@ -86,6 +87,7 @@ def match(
     high: float | None = None,
     hold: str = "parameters",
     source: str = "",
+    executor: Executor | None = None,
     progress: Progress = _silent,
 ) -> Match:
     """Find the value of one parameter at which a quantity at one temperature equals a measured one.
@@ -96,6 +98,8 @@ def match(
         "alpha_linear_per_K", "lattice_A" (axis a) or "bulk_modulus_T_GPa".
     low, high
         Range searched; by default 0.8 to 1.25 times the present value.
+    executor
+        Runs the blocks of a sampled anharmonicity; predictions follow one another.
 
     Raises
     ------
@@ -116,7 +120,7 @@ def match(
 
     def found(value: float) -> float:
         if value not in seen:
-            points[value] = evaluate(with_parameter(base, parameter, value))
+            points[value] = evaluate(with_parameter(base, parameter, value), executor)
             seen[value] = points[value].at(quantity, temperature_K)
         return seen[value]
 

@@ -3,15 +3,18 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from concurrent.futures import Executor
 from dataclasses import asdict, dataclass
 from typing import Any
 
 import numpy as np
 
+from thermex.anharmonic.method import was_interrupted
 from thermex.case.case import Case
 from thermex.comparison.modelled import modelled
 from thermex.errors import InputError, NoAnswerError
 from thermex.expansion import predict
+from thermex.exploration.executor import InProcess
 from thermex.prediction import Prediction
 
 
@@ -78,10 +81,29 @@ def point_of(content: Mapping[str, Any]) -> Point:
     return Point(**fields)
 
 
-def evaluate(case: Case) -> Point:
-    """Predict one case; an answer that does not exist becomes a point with its reason."""
+def evaluate_alone(case: Case) -> Point:
+    """Predict one of many cases inside a worker: nothing of it starts workers of its own."""
+    return evaluate(case, InProcess())
+
+
+def evaluate(case: Case, executor: Executor | None = None) -> Point:
+    """Predict one case; an answer that does not exist becomes a point with its reason.
+
+    Parameters
+    ----------
+    executor
+        Runs the blocks of a sampled anharmonicity; two threads by default.
+
+    Raises
+    ------
+    KeyboardInterrupt
+        Interrupted, in a sampling too: one prediction keeps what was sampled, a point of many does not.
+    """
     try:
-        return reduced(predict(case))
+        prediction = predict(case, executor=executor)
+        if was_interrupted(prediction.anharmonic):
+            raise KeyboardInterrupt
+        return reduced(prediction)
     except (NoAnswerError, InputError) as error:
         return _unanswered(tuple(case.conditions.temperatures), str(error))
 

@@ -19,7 +19,7 @@ from thermex.commands.interruption import Interrupted
 from thermex.errors import InputError
 from thermex.exploration.executor import InProcess
 from thermex.exploration.journal import Journal, open_journal
-from thermex.exploration.point import Point, evaluate, point_of
+from thermex.exploration.point import Point, evaluate, evaluate_alone, point_of
 
 #: What a journal line holds; a journal of another layout is not resumed.
 JOURNAL = "2"
@@ -69,7 +69,8 @@ def sweep(
     second
         A second parameter with its values: every combination is a point (a map).
     executor
-        Anything shaped like ``concurrent.futures.Executor``; in this process by default.
+        Anything shaped like ``concurrent.futures.Executor``; in this process by default. It is given
+        whole points: a sampled anharmonicity runs its blocks inside the worker that has the point.
     folder
         Where the journal is kept; the same call resumes.
 
@@ -110,7 +111,7 @@ def run_points(cases: dict[str, Case], journal: Journal, executor: Executor, pro
                 done += 1
                 progress("points", done, total)
             return
-        pending = {executor.submit(evaluate, case): key for key, case in waiting.items()}
+        pending = {executor.submit(evaluate_alone, case): key for key, case in waiting.items()}
         for future in as_completed(pending):
             journal.add(pending[future], future.result().as_dict())
             done += 1
