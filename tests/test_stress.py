@@ -138,6 +138,9 @@ def _five_point(v: np.ndarray, h: float) -> float:
     return float((v[0] - 8.0 * v[1] + 8.0 * v[3] - v[4]) / (12.0 * h))
 
 
+#: Largest relative error allowed in a slope taken over ±2 % of T.
+STEEPEST = 2e-3
+
 #: An expansion of less than this between two temperatures drowns in the rounding of V.
 SEEN = 1e-9
 
@@ -178,6 +181,8 @@ def test_random_physical_parameters_give_numbers_or_a_reason(capsys: pytest.Capt
             if name in SLOPES:
                 if not near_end:
                     slopes[name].append(error)
+                if not near_end and error > STEEPEST:
+                    faults.append(f"set {number}: {name} to {error:.1e}: {case}")
             else:
                 worst[name] = max(worst.get(name, 0.0), error)
                 if error > LARGEST:
@@ -193,7 +198,7 @@ def test_random_physical_parameters_give_numbers_or_a_reason(capsys: pytest.Capt
     assert not faults
     assert answered > 0.3 * SETS
     for errors in slopes.values():
-        assert np.median(errors) < 1e-5 and max(errors) < 2e-3
+        assert np.median(errors) < 1e-5
 
 
 @pytest.mark.parametrize("masses", [(0.01, 0.01), (300.0, 300.0), (1.0, 300.0)])

@@ -110,13 +110,16 @@ def survey(lattice: Lattice, load: Load, highest_K: float) -> Branch:
         surface = FreeEnergy((lattice.static_over(box), _vibrations(sampler, box, found)))
         fine = np.linspace(low, high, 17)
         temperatures = temperature_at(surface, fine, load, ceiling)
-        if not xs and np.isfinite(temperatures).any():
-            xs.append(coldest(surface, load, float(fine[np.isfinite(temperatures)][0])))
+        warm = ~np.isnan(temperatures)
+        if not xs and warm.any():
+            xs.append(coldest(surface, load, float(fine[warm][0])))
             ts.append(0.0)
         for x, t in zip(fine, temperatures, strict=True):
             if np.isnan(t) or (xs and x <= xs[-1]):
                 continue
             if np.isinf(t):
+                xs.append(float(x))
+                ts.append(ceiling)
                 return Branch(
                     np.array(xs),
                     np.array(ts),
@@ -198,9 +201,14 @@ def refine_end(branch: Branch, load: Load, surface_on: Callable[[float, float], 
     best = int(np.nanargmax(np.where(good, t, -np.inf)))
     if best == len(x) - 1:
         return float(x[-1]), float(t[-1])
-    near = slice(max(best - 2, 0), best + 3)
-    curve = np.polynomial.Polynomial.fit(x[near], t[near], min(4, len(x[near]) - 1))
+    near = np.arange(max(best - 2, 0), best + 3)
+    near = near[good[near]]
+    if len(near) < 3:
+        return float(x[best]), float(t[best])
+    curve = np.polynomial.Polynomial.fit(x[near], t[near], min(4, len(near) - 1))
     roots = curve.deriv().roots()
     real = roots[np.abs(roots.imag) < 1e-9].real
+    if not len(real):
+        return float(x[best]), float(t[best])
     peak = float(real[np.argmin(np.abs(real - x[best]))])
-    return peak, float(curve(peak))
+    return (peak, float(curve(peak))) if abs(peak - x[best]) < half else (float(x[best]), float(t[best]))

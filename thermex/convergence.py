@@ -19,6 +19,9 @@ from thermex.prediction import NumericalError
 
 Array = NDArray[np.float64]
 
+#: Stands in for an imaginary frequency, THz; no state of such a cell is kept.
+TINY = 1e-9
+
 #: Relative error that rounding and the lattice sums leave in α at least.
 FLOOR = 3e-7
 
@@ -47,6 +50,8 @@ class Surface:
     box: Box
     frequencies: Array
     """Shape (cells, nq, 3n), THz."""
+    lowest: Array
+    """Shape (cells,): the lowest frequency of each cell on both meshes; negative where imaginary."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -77,8 +82,9 @@ def build(lattice: Lattice, box: Box, divisions: tuple[int, int, int], order: in
     )
     found = frequencies_over(motion, box, both)
     size = len(mesh.points)
-    fine = Vibrations(box, found[:, :size], mesh.weights)
-    rough = Vibrations(box, found[:, size:], coarse.weights)
+    real = np.maximum(found, TINY)
+    fine = Vibrations(box, real[:, :size], mesh.weights)
+    rough = Vibrations(box, real[:, size:], coarse.weights)
     return Surface(
         FreeEnergy((lattice.static_over(box), fine)),
         FreeEnergy((lattice.static_over(box), rough)),
@@ -86,6 +92,7 @@ def build(lattice: Lattice, box: Box, divisions: tuple[int, int, int], order: in
         mesh,
         box,
         found[:, :size],
+        found.min(axis=(1, 2)),
     )
 
 
@@ -93,7 +100,7 @@ def build_plain(lattice: Lattice, box: Box, divisions: tuple[int, int, int]) -> 
     """Compute phonons on one graded mesh at every cell of a box, with no companion."""
     mesh = graded(lattice.crystal, divisions, 1)
     found = frequencies_over(lattice.motion(mesh.points), box, mesh)
-    return FreeEnergy((lattice.static_over(box), Vibrations(box, np.maximum(found, 1e-9), mesh.weights)))
+    return FreeEnergy((lattice.static_over(box), Vibrations(box, np.maximum(found, TINY), mesh.weights)))
 
 
 def three_quarters(divisions: tuple[int, int, int]) -> tuple[int, int, int]:
@@ -162,7 +169,7 @@ def supercell_error(lattice: Lattice, solution: Solution, load: Load, divisions:
     box = Box(solution.surface.box.window, tuple(min(n, points) for n in solution.surface.box.counts))
     mesh = graded(lattice.crystal, divisions_for(lattice.crystal, divisions))
     found = [
-        np.maximum(frequencies_over(motion, box, mesh), 1e-9)
+        np.maximum(frequencies_over(motion, box, mesh), TINY)
         for motion in (lattice.exact_motion(mesh.points), lattice.motion(mesh.points))
     ]
     exact, interpolated = (Vibrations(box, f, mesh.weights) for f in found)

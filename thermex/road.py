@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from thermex import convergence
-from thermex.branch import Branch, refine_end, survey
+from thermex.branch import IMAGINARY, Branch, refine_end, survey
 from thermex.chebyshev import Box
 from thermex.convergence import Solution
 from thermex.equilibrium import Load
@@ -142,6 +142,10 @@ def _settled(lattice: Lattice, branch: Branch, load: Load, wanted: Array, accura
     """
     while True:
         solution = _solve(lattice, branch, load, wanted, accuracy)
+        if (solution.surface.lowest <= 0.0).any():
+            branch = _before_soft(branch, solution)
+            wanted = _on_branch(wanted, branch)
+            continue
         good = minima(solution)
         if good.all():
             return branch, solution
@@ -154,6 +158,24 @@ def _settled(lattice: Lattice, branch: Branch, load: Load, wanted: Array, accura
         sound = minima(probed)
         end = trial[-1] if sound.all() else trial[max(int(np.argmin(sound)) - 1, 0)]
         branch, wanted = _shortened(branch, float(end)), wanted[wanted <= end]
+
+
+def _before_soft(branch: Branch, solution: Solution) -> Branch:
+    """End a branch at the last cell whose phonons are all real on the finer mesh.
+
+    Raises
+    ------
+    BranchEndError
+        There is none.
+    """
+    cells = solution.surface.box.grid[:, 0]
+    soft = int(np.argmax(solution.surface.lowest <= 0.0))
+    x = float(cells[max(soft - 1, 0)])
+    if soft == 0 or x <= branch.x[0]:
+        raise BranchEndError("phonons turn imaginary before the zero-point state", where="free energy")
+    kelvin = float(np.interp(x, branch.x, branch.temperature))
+    short = _shortened(branch, kelvin)
+    return replace(short, reason=IMAGINARY, first_imaginary=float(cells[soft]))
 
 
 def _shortened(branch: Branch, kelvin: float) -> Branch:
