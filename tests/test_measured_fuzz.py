@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import random
 import tempfile
 import time
@@ -100,8 +101,11 @@ def fuzz_measured(count: int, seed: int) -> tuple[int, int]:
 
 
 @pytest.mark.parametrize("seed", [1, 2, 3])
-def test_garbage_is_refused_in_words(seed: int) -> None:
-    read, refused = fuzz_measured(200, seed)
-    assert read + refused == 200
-    assert refused > 50
+def test_garbage_is_refused_in_words(seed: int, capsys: pytest.CaptureFixture[str]) -> None:
+    count = int(os.environ.get("THERMEX_FUZZ", "600")) // 3
+    read, refused = fuzz_measured(count, seed)
+    with capsys.disabled():
+        print(f"\n{count} bad files of measured values: {refused} refused, {read} still sensible", end=" ")
+    assert read + refused == count
+    assert refused > 0.25 * count
     assert read > 5
