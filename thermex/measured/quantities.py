@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 import unicodedata
 from collections.abc import Mapping
 from dataclasses import dataclass, field
@@ -113,6 +114,19 @@ HEAT_CAPACITY = Quantity(
 GRUNEISEN = Quantity(
     "Grüneisen parameter", "1", -100.0, 100.0, _RATIO, ("1",), ("gamma", "gruneisen", "grueneisenparameter")
 )
+_FREQUENCY = {"thz": 1.0, "1/cm": 0.0299792458, "cm-1": 0.0299792458, "mev": 0.2417989242}
+STATIC_DIELECTRIC = Quantity(
+    "static dielectric constant", "1", 1.0, 1e5, _RATIO, ("1",), ("eps0", "epsilon0", "ε0", "staticpermittivity")
+)
+ELECTRONIC_DIELECTRIC = Quantity(
+    "electronic dielectric constant", "1", 1.0, 1e3, _RATIO, ("1",), ("epsinf", "ε∞", "highfrequencydielectricconstant")
+)
+TRANSVERSE = Quantity(
+    "transverse optic frequency", "THz", 0.01, 300.0, _FREQUENCY, ("THz", "1/cm", "meV"), ("to", "tofrequency")
+)
+LONGITUDINAL = Quantity(
+    "longitudinal optic frequency", "THz", 0.01, 300.0, _FREQUENCY, ("THz", "1/cm", "meV"), ("lo", "lofrequency")
+)
 DEBYE = Quantity("Debye temperature", "K", 1.0, 1e4, {"k": 1.0}, ("K",), ("thetad",))
 
 #: Every quantity, in the order in which a file lists them.
@@ -127,7 +141,14 @@ QUANTITIES: tuple[Quantity, ...] = (
     HEAT_CAPACITY,
     GRUNEISEN,
     DEBYE,
+    STATIC_DIELECTRIC,
+    ELECTRONIC_DIELECTRIC,
+    TRANSVERSE,
+    LONGITUDINAL,
 )
+
+#: What a crystal answers to fields, beside the response that a prediction reports.
+RESPONSE: tuple[Quantity, ...] = (ELECTRONIC_DIELECTRIC, STATIC_DIELECTRIC, TRANSVERSE, LONGITUDINAL)
 
 _SPELLINGS = str.maketrans(
     {
@@ -141,7 +162,7 @@ _SPELLINGS = str.maketrans(
 def plain_unit(text: str) -> str:
     """Return a unit in the spelling of the tables: no blanks, dots or superscripts, lower case."""
     plain = unicodedata.normalize("NFC", text).translate(_SPELLINGS).lower().strip("[]")
-    plain = plain.replace("degc", "k").replace("/c", "/k").replace("c-1", "k-1")
+    plain = re.sub("/c(?!m)", "/k", plain.replace("degc", "k")).replace("c-1", "k-1")
     for times in ("1x10", "x10"):
         if plain.startswith(times):
             return "10" + plain.removeprefix(times)

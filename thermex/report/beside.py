@@ -12,6 +12,7 @@ from thermex.case.case import Case
 from thermex.errors import InputError
 from thermex.measured import Material, best_measured, load_material, load_series_file
 from thermex.measured.lookup import trust_order
+from thermex.measured.quantities import RESPONSE
 from thermex.prediction import Prediction
 from thermex.report.doubts import doubts
 
@@ -53,6 +54,8 @@ class Beside:
     columns: dict[str, Column] = field(default_factory=dict)
     """By quantity (the names of the JSON)."""
     curves: tuple[Curve, ...] = ()
+    response: tuple[str, ...] = ()
+    """Measured dielectric constants and optic frequencies in words, each with its source number."""
     doubts: tuple[str, ...] = ()
     """What the measured values say against the prediction as a whole."""
 
@@ -103,7 +106,25 @@ def beside_of(prediction: Prediction) -> Beside:
         if any(found):
             value = np.array([f.value if f else np.nan for f in found])
             columns[name] = Column(value, tuple(f.source_number if f else 0 for f in found))
-    return Beside(material.sources, columns, tuple(_curves(material, prediction)), doubts(prediction, material))
+    return Beside(
+        material.sources,
+        columns,
+        tuple(_curves(material, prediction)),
+        tuple(_response(material)),
+        doubts(prediction, material),
+    )
+
+
+def _response(material: Material) -> Iterator[str]:
+    """Say what was measured of the answer to fields: quantity, value, temperature, source."""
+    for quantity in RESPONSE:
+        for series in sorted(material.series, key=trust_order):
+            if series.quantity != quantity.name or not series.usable:
+                continue
+            unit = "" if quantity.unit == "1" else f" {quantity.unit}"
+            along = f" along {series.axis}" if series.axis else ""
+            for kelvin, value in zip(series.temperature_K, series.value, strict=True):
+                yield f"{quantity.name}{along} {value:.4g}{unit} at {kelvin:.0f} K [{series.source_number}]"
 
 
 def material_of(case: Case) -> Material | None:

@@ -63,7 +63,7 @@ def prediction_sections(prediction: Prediction, beside: Beside, record: Mapping[
         Section("What limits this result", listing([*beside.doubts, *limits(prediction)])),
         Section("The three conventions", _conventions(prediction)),
         Section("Stiffness, heat and the Grüneisen parameter", _thermodynamics(prediction, beside)),
-        Section("Vibrations", _vibrations(prediction)),
+        Section("Vibrations", _vibrations(prediction, beside)),
         Section("Pair energies and thermal spread", _pairs(prediction)),
         Section("Numerical error", convergence_body(prediction)),
         Section("Crystal at rest", static_body(prediction)),
@@ -204,7 +204,7 @@ def _thermodynamics(prediction: Prediction, beside: Beside) -> str:
     return gallery(pictures)
 
 
-def _vibrations(prediction: Prediction) -> str:
+def _vibrations(prediction: Prediction, beside: Beside) -> str:
     if not prediction.modes:
         return ""
     pictures = [
@@ -219,11 +219,11 @@ def _vibrations(prediction: Prediction) -> str:
             "Area: number of vibrations per primitive cell.",
         ),
     ]
-    return gallery(pictures) + _zone_centre(prediction)
+    return gallery(pictures) + _zone_centre(prediction, beside)
 
 
-def _zone_centre(prediction: Prediction) -> str:
-    rows = [list(row) for row in response_rows(prediction)]
+def _zone_centre(prediction: Prediction, beside: Beside) -> str:
+    rows = [list(row) for row in response_rows(prediction, beside.response)]
     return word_table(("Response of the crystal at rest", "value"), rows) if rows else ""
 
 

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -20,8 +22,8 @@ MOST = 8
 EQUAL = 5e-4
 
 
-def response_rows(prediction: Prediction) -> list[tuple[str, str]]:
-    """Return (quantity, values with units) of the crystal at rest; nothing without charges."""
+def response_rows(prediction: Prediction, measured: Sequence[str] = ()) -> list[tuple[str, str]]:
+    """Return (quantity, values with units) of the crystal at rest, then what was measured; nothing without charges."""
     centre = prediction.zone_centre
     if centre is None:
         return []
@@ -31,10 +33,11 @@ def response_rows(prediction: Prediction) -> list[tuple[str, str]]:
         ("dielectric constant ε₀, static", _diagonal(centre.dielectric_static, 3)),
         ("optic modes at Γ without field (TO)", f"{_modes(centre.transverse_THz)} THz"),
         ("optic modes for q → 0 along z (LO and TO)", f"{_modes(centre.longitudinal_THz)} THz"),
+        *(("measured", said) for said in measured),
     ]
 
 
-def response_lines(prediction: Prediction) -> list[str]:
+def response_lines(prediction: Prediction, measured: Sequence[str] = ()) -> list[str]:
     """Return the same in short for the terminal."""
     centre = prediction.zone_centre
     if centre is None:
@@ -44,6 +47,7 @@ def response_lines(prediction: Prediction) -> list[str]:
         f"ε₀ {_diagonal(centre.dielectric_static, 3)}.",
         f"Optic modes at Γ: TO {_modes(centre.transverse_THz)} THz; with the field of q → 0 along z "
         f"{_modes(centre.longitudinal_THz)} THz.",
+        *([f"Measured: {'; '.join(measured)}."] if measured else []),
     ]
 
 
