@@ -55,7 +55,6 @@ def test_static_axes_of_published_sets(name: str) -> None:
 MISSES = {
     "PEDONE06 Al2O3": ("Al2O3", 300.0, 0.16, 0.05, -0.006, 0.005),
     "MA91 TiO2": ("TiO2", 298.15, -0.55, -0.22, -0.019, 0.022),
-    "PEDONE06 TiO2": ("TiO2", 298.15, -0.16, -0.10, -0.001, 0.020),
     "PEDONE06 ZnO": ("ZnO", 300.0, 1.00, 1.07, 0.004, -0.017),
 }
 
@@ -79,7 +78,9 @@ def test_axes_beside_measured_values(name: str) -> None:
     assert found[2:] == pytest.approx(expected[2:], abs=0.002)
 
 
-@pytest.mark.parametrize(("name", "formula"), [("PEDONE06 Al2O3", "Al2O3"), ("MA91 TiO2", "TiO2"), ("LC85 ZnO", "ZnO")])
+@pytest.mark.parametrize(
+    ("name", "formula"), [("PEDONE06 Al2O3", "Al2O3"), ("MA91 TiO2", "TiO2"), ("PEDONE06 ZnO", "ZnO")]
+)
 def test_the_order_of_the_axes_is_the_measured_one(name: str, formula: str) -> None:
     """Corundum and rutile expand more along c, zincite more along a (the shipped measured files)."""
     p, material = predicted(name), load_material(formula)
@@ -92,7 +93,7 @@ def test_the_order_of_the_axes_is_the_measured_one(name: str, formula: str) -> N
     assert (p.alpha_axis_per_K["c"][k] > p.alpha_axis_per_K["a"][k]) == (measured["c"] > measured["a"])
 
 
-@pytest.mark.parametrize("name", ["PEDONE06 Al2O3", "PEDONE06 TiO2", "PEDONE06 ZnO"])
+@pytest.mark.parametrize("name", ["PEDONE06 Al2O3", "PEDONE06 ZnO"])
 def test_volume_only_path_differs_by_what_is_reported(name: str) -> None:
     """Axes locked to hydrostatic static relaxation: α_V within 2 % of the free axes, and reported."""
     p = predicted(name)
