@@ -201,7 +201,7 @@ def refine_end(branch: Branch, load: Load, surface_on: Callable[[float, float], 
     best = int(np.nanargmax(np.where(good, t, -np.inf)))
     if best == len(x) - 1:
         return float(x[-1]), float(t[-1])
-    near = np.arange(max(best - 2, 0), best + 3)
+    near = np.arange(max(best - 2, 0), min(best + 3, len(x)))
     near = near[good[near]]
     if len(near) < 3:
         return float(x[best]), float(t[best])
