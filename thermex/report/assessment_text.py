@@ -96,6 +96,13 @@ def undecided_lines(a: Assessment) -> list[str]:
         if d.verdict == UNDECIDED:
             reasons.setdefault(d.why, []).append(f"{short(d.quantity)} [{d.series.source_number}]")
     said = [f"Undecided: {'; '.join(dict.fromkeys(names))}: {why}." for why, names in reasons.items()]
+    left = [
+        f"{d.left_out} of {d.left_out + len(d.temperature_K)} of {short(d.quantity)} [{d.series.source_number}]"
+        for d in a.deviations
+        if d.left_out and len(d.temperature_K)
+    ]
+    if left:
+        said.append(f"Left out, for the prediction has no value at their temperatures: {'; '.join(left)}.")
     judged = f"A series is reproduced when its rms deviation is within {a.tolerance:.0%}"
     if any(d.series.quantity == "lattice parameter" for d in a.deviations):
         judged += f" (lattice parameters {a.tolerance / 20.0:.1%})"
