@@ -18,7 +18,7 @@ from thermex.errors import ThermexError
 from thermex.expansion import predict
 from thermex.prediction import Prediction
 
-SETS = int(os.environ.get("THERMEX_STRESS", "60"))
+SETS = int(os.environ.get("THERMEX_STRESS", "40"))
 SEED = 424242
 
 #: Largest relative error allowed in each identity.
