@@ -60,14 +60,15 @@ def model_of(m: Modelled, series: Series) -> Array | None:
     axis = series.axis if series.axis in m.lattice else ""
     if series.quantity == "lattice parameter":
         return m.at(m.lattice[axis or "a"], kelvin)
-    if series.quantity == "volume expansion coefficient":
+    volumetric = series.quantity == "volume expansion coefficient"
+    if volumetric and series.kind == "instantaneous":
         return 3.0 * m.at(m.alpha, kelvin)
     if series.quantity == "linear expansion coefficient" and series.kind == "instantaneous":
         return m.at(m.alpha_axis[axis] if axis else m.alpha, kelvin)
     if series.quantity == "elongation" or series.kind == "mean":
         t0 = 293.15 if series.reference_temperature_K is None else float(series.reference_temperature_K)
-        length = m.log_length[axis]
-        stretch = np.expm1(m.at(length, kelvin) - m.at(length, np.array([t0]))[0])
+        length = m.log_length["" if volumetric else axis]
+        stretch = np.expm1((3.0 if volumetric else 1.0) * (m.at(length, kelvin) - m.at(length, np.array([t0]))[0]))
         if series.quantity == "elongation":
             return np.asarray(stretch)
         with np.errstate(divide="ignore", invalid="ignore"):
