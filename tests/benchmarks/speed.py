@@ -126,6 +126,7 @@ def born_case() -> Any:
 
 def sweep_of_exponents() -> dict[str, float]:
     """Compare 15 exponents with 15 predictions, and 60 points by two workers with 60 one after the other."""
+    from thermex.case.parameters import with_parameter
     from thermex.exploration.executor import local_workers
     from thermex.exploration.sweep import sweep
 
@@ -134,6 +135,8 @@ def sweep_of_exponents() -> dict[str, float]:
     start = perf_counter()
     sweep(case, "Na-Cl.n", np.linspace(7.0, 12.0, 15))
     many = perf_counter() - start
+    exponents = [with_parameter(case, "Na-Cl.n", float(n)) for n in np.linspace(7.0, 12.0, 15)]
+    alone = sum(computing(changed) for changed in exponents)
     values = np.linspace(7.0, 12.0, 60)
     start = perf_counter()
     sweep(case, "Na-Cl.n", values)
@@ -146,6 +149,7 @@ def sweep_of_exponents() -> dict[str, float]:
         "one prediction, s": one,
         "15 points, s": many,
         "ratio 15 points / one": many / one,
+        "ratio 15 points / the same 15 alone": many / alone,
         "60 points serial, s": serial,
         "60 points, two workers, s": parallel,
         "ratio two workers / serial": parallel / serial,
